@@ -1,0 +1,62 @@
+/*
+ * command.h - the commands table: `incisura COMMAND [ARG ...] [--option VALUE]`.
+ *
+ * To add a command: one new file with a `const struct command`, and one line in the table in
+ * main.c. The entry is also its help and its part of the man page.
+ *
+ * Results go to stdout, talk to stderr. A command returns its exit status: 0 done, 1 found
+ * something wrong in the data, 2 could not do it (after command_fail()).
+ */
+#ifndef COMMAND_COMMAND_H
+#define COMMAND_COMMAND_H
+
+#include <stdbool.h>
+#include <stddef.h>
+
+#include "base/err.h"
+
+enum { EXIT_DONE = 0, EXIT_FINDINGS = 1, EXIT_FAILED = 2 };
+enum { OPTION_MAX = 24 };
+
+struct option_spec {
+    const char *name;  /* "until", used as --until; NULL ends the list */
+    const char *value; /* "TIME" in help; NULL = a flag without a value */
+    bool many;         /* may be given more than once */
+    const char *help;
+};
+
+struct command;
+
+/* What was typed, checked against the entry: unknown options, missing values and too few or too
+ * many arguments never reach run(). */
+struct arguments {
+    const struct command *command;
+    const char *const *args; /* shape (count), without the command's name */
+    size_t count;
+    const char **values[OPTION_MAX]; /* one list per option in spec order */
+    size_t value_count[OPTION_MAX];
+};
+
+struct command {
+    const char *name;
+    const char *args;    /* "CASE FILE..." in help */
+    size_t least, most;  /* number of arguments */
+    const char *summary; /* one line */
+    const char *detail;  /* paragraphs for `help NAME`, wrapped at 80 */
+    const struct option_spec *options;
+    int (*run)(const struct arguments *arguments);
+};
+
+extern const struct command *const commands[]; /* NULL-terminated */
+
+/* Value of an option: the last given, or NULL. `name` must be in the command's list. */
+const char *argument(const struct arguments *arguments, const char *name);
+bool argument_flag(const struct arguments *arguments, const char *name);
+/* All values of a `many` option. */
+const char *const *argument_all(const struct arguments *arguments, const char *name,
+                                size_t *count);
+
+/* Prints "incisura COMMAND: TEXT" on stderr; returns EXIT_FAILED. */
+int command_fail(const struct arguments *arguments, const struct err *err);
+
+#endif
