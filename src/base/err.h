@@ -11,7 +11,7 @@
 #ifndef BASE_ERR_H
 #define BASE_ERR_H
 
-#define MUST_CHECK __attribute__((warn_unused_result))
+#define MUST_CHECK             __attribute__((warn_unused_result))
 #define PRINTF_LIKE(fmt, args) __attribute__((format(printf, fmt, args)))
 
 enum err_code {

@@ -73,8 +73,8 @@ MUST_CHECK int folder_sync(const char *path, struct err *err);
 
 /* BLAKE2b-256 (RFC 7693), as 64 lower-case hexadecimal digits. */
 enum { DIGEST_SIZE = 32, DIGEST_TEXT_SIZE = 65 };
-MUST_CHECK int digest_file(const char *path, struct progress *progress,
-                           char out[DIGEST_TEXT_SIZE], struct err *err);
+MUST_CHECK int digest_file(const char *path, struct progress *progress, char out[DIGEST_TEXT_SIZE],
+                           struct err *err);
 void digest_bytes(const void *data, size_t size, uint8_t out[DIGEST_SIZE]);
 void digest_text(const uint8_t digest[DIGEST_SIZE], char out[DIGEST_TEXT_SIZE]);
 

@@ -17,13 +17,13 @@
 
 #include "base/err.h"
 
-#define NS_PER_US 1000LL
-#define NS_PER_MS 1000000LL
-#define NS_PER_S 1000000000LL
-#define NS_PER_MIN (60 * NS_PER_S)
+#define NS_PER_US   1000LL
+#define NS_PER_MS   1000000LL
+#define NS_PER_S    1000000000LL
+#define NS_PER_MIN  (60 * NS_PER_S)
 #define NS_PER_HOUR (3600 * NS_PER_S)
-#define NS_PER_DAY (86400 * NS_PER_S)
-#define NS_NONE INT64_MIN /* "no such time" */
+#define NS_PER_DAY  (86400 * NS_PER_S)
+#define NS_NONE     INT64_MIN /* "no such time" */
 
 enum { TIME_TEXT_SIZE = 40 }; /* room for any text written here */
 

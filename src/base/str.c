@@ -154,7 +154,8 @@ static const char *skip_blanks(const char *text)
 bool number_parse(const char *text, double *out)
 {
     text = skip_blanks(text);
-    /* strtod also reads "inf", "nan" and hexadecimal, none of which a recording or a person means. */
+    /* strtod also reads "inf", "nan" and hexadecimal, none of which a recording or a person means.
+     */
     if (!*text || strspn(text, "+-.0123456789eE \t") != strlen(text))
         return false;
     char *end;

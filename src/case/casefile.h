@@ -32,9 +32,9 @@ struct attached {
     const struct recording_info *info;
     const struct recording *recording;
     struct clock_map map;
-    const char *digest;         /* "" for a bare file */
-    const char *problem;        /* "" or why its signals cannot be read: moved, changed */
-    struct overview *overview;  /* NULL until casefile_overviews() */
+    const char *digest;        /* "" for a bare file */
+    const char *problem;       /* "" or why its signals cannot be read: moved, changed */
+    struct overview *overview; /* NULL until casefile_overviews() */
 };
 
 /* Opens `path`: a case, or a bare recording (mode must be STORE_READ then). `rater` as in

@@ -53,8 +53,7 @@ extern const struct command *const commands[]; /* NULL-terminated */
 const char *argument(const struct arguments *arguments, const char *name);
 bool argument_flag(const struct arguments *arguments, const char *name);
 /* All values of a `many` option. */
-const char *const *argument_all(const struct arguments *arguments, const char *name,
-                                size_t *count);
+const char *const *argument_all(const struct arguments *arguments, const char *name, size_t *count);
 
 /* Prints "incisura COMMAND: TEXT" on stderr; returns EXIT_FAILED. */
 int command_fail(const struct arguments *arguments, const struct err *err);

@@ -21,9 +21,9 @@
 enum derivation_kind { DERIVES_TRACE, DERIVES_TRAIN };
 
 struct parameter {
-    const char *name; /* "rate"; NULL ends the list */
-    const char *unit; /* UCUM; "" = none */
-    double standard;  /* default */
+    const char *name;       /* "rate"; NULL ends the list */
+    const char *unit;       /* UCUM; "" = none */
+    double standard;        /* default */
     double least, greatest; /* inclusive */
     const char *choices;    /* "raw|db|relative": the value is the index; NULL = a number */
     const char *help;

@@ -30,12 +30,12 @@ struct edf_channel_spec {
 };
 
 struct edf_spec {
-    bool bdf;           /* 24-bit BDF+ instead of 16-bit EDF+ */
-    bool discontinuous; /* +D: records may leave gaps */
-    const char *subject;   /* EDF+ patient field; NULL = "X X X X" */
-    const char *recording; /* after "Startdate dd-MMM-yyyy "; NULL = "X X X" */
-    int64_t start_civil_ns; /* fractions of a second go to the first record's onset */
-    int64_t record_ns;      /* duration of a record */
+    bool bdf;                /* 24-bit BDF+ instead of 16-bit EDF+ */
+    bool discontinuous;      /* +D: records may leave gaps */
+    const char *subject;     /* EDF+ patient field; NULL = "X X X X" */
+    const char *recording;   /* after "Startdate dd-MMM-yyyy "; NULL = "X X X" */
+    int64_t start_civil_ns;  /* fractions of a second go to the first record's onset */
+    int64_t record_ns;       /* duration of a record */
     size_t annotation_bytes; /* room for annotations a record; 0 = 120 */
     const struct edf_channel_spec *channels;
     size_t channel_count;

@@ -30,8 +30,8 @@ struct recording {
     const struct recording_ops *ops;
     struct arena arena;
     struct recording_info info;
-    struct channel *channels;  /* writable view of info.channels, until opening is over */
-    const char **notes;        /* grown by recording_note() */
+    struct channel *channels; /* writable view of info.channels, until opening is over */
+    const char **notes;       /* grown by recording_note() */
     size_t note_count, note_room;
 };
 
@@ -48,7 +48,7 @@ extern const struct reader *const readers[]; /* NULL-terminated; asked in order 
 
 /* Adds one line to info.notes. A note repeated for many channels or records is the reader's to
  * count and say once. */
-MUST_CHECK int recording_note(struct recording *recording, struct err *err, const char *format,
-                              ...) PRINTF_LIKE(3, 4);
+MUST_CHECK int recording_note(struct recording *recording, struct err *err, const char *format, ...)
+    PRINTF_LIKE(3, 4);
 
 #endif

@@ -32,8 +32,8 @@ struct channel {
     const char *transducer; /* "" when the format has none */
     const char *prefilter;  /* "" when the format has none */
     enum role role;
-    const char *role_why; /* one clause: why this role */
-    double rate_hz;       /* of its first run; 0 for an irregular channel */
+    const char *role_why;              /* one clause: why this role */
+    double rate_hz;                    /* of its first run; 0 for an irregular channel */
     double physical_min, physical_max; /* declared range; both 0 when the format has none */
     int64_t samples;                   /* over all runs, missing ones included */
     const struct run *runs;            /* shape (run_count); NULL for an irregular channel */
@@ -48,16 +48,16 @@ struct gap {
 
 struct annotation {
     int64_t onset_ns;
-    int64_t span_ns; /* 0 for a point */
+    int64_t span_ns;  /* 0 for a point */
     const char *text; /* UTF-8, never NULL */
     const char *kind; /* WFDB mnemonic ("N", "V", "+"); "" in other formats */
 };
 
 struct recording_info {
-    const char *path;      /* as opened */
-    const char *format;    /* "EDF", "EDF+C", "EDF+D", "BDF", ..., "WFDB", "CSV" */
-    const char *subject;   /* the file's own identification texts; "" when none. Personal: never */
-    const char *equipment; /* exported unless asked */
+    const char *path;       /* as opened */
+    const char *format;     /* "EDF", "EDF+C", "EDF+D", "BDF", ..., "WFDB", "CSV" */
+    const char *subject;    /* the file's own identification texts; "" when none. Personal: never */
+    const char *equipment;  /* exported unless asked */
     int64_t start_civil_ns; /* NS_NONE when the file does not say */
     int64_t span_ns;        /* from 0 to the end of the last run */
     const struct channel *channels;
@@ -72,10 +72,10 @@ struct recording_info {
 
 /* What a reader may need to be told. A zeroed struct is the usual case. */
 struct reader_options {
-    double rate_hz;                 /* CSV without a time column; 0 = has one */
-    const char *const *units;       /* "LABEL=UNIT" texts, shape (unit_count) */
+    double rate_hz;           /* CSV without a time column; 0 = has one */
+    const char *const *units; /* "LABEL=UNIT" texts, shape (unit_count) */
     size_t unit_count;
-    const char *const *roles;       /* "LABEL=ROLE" texts, shape (role_count) */
+    const char *const *roles; /* "LABEL=ROLE" texts, shape (role_count) */
     size_t role_count;
     const struct file_space *files; /* NULL = disk_files */
 };

@@ -62,7 +62,7 @@ struct stored_recording {
     const char *path; /* as attached, absolute */
     int64_t size;
     char digest[DIGEST_TEXT_SIZE];
-    const char *options; /* reader options, one "name=value" a line; "" */
+    const char *options;    /* reader options, one "name=value" a line; "" */
     int64_t start_civil_ns; /* of the recording's own clock; NS_NONE = file says none */
 };
 
@@ -145,9 +145,9 @@ struct history_row {
     int64_t seq; /* 1, 2, 3, ... */
     int64_t utc_ns;
     const char *rater;
-    const char *program; /* "incisura 0.1.0" */
-    const char *action;  /* "create", "attach", "mark-add", "mark-change", "undo", ... */
-    int64_t object;      /* id of the mark or recording; 0 = the case */
+    const char *program;        /* "incisura 0.1.0" */
+    const char *action;         /* "create", "attach", "mark-add", "mark-change", "undo", ... */
+    int64_t object;             /* id of the mark or recording; 0 = the case */
     const char *before, *after; /* JSON objects of the changed fields; "" when none */
     const char *why;
     char digest[DIGEST_TEXT_SIZE];

@@ -28,8 +28,7 @@ struct overview;
  * otherwise starts `threads` builders, which write `path` when done. `path` NULL = memory only.
  * The recording must outlive the overview. */
 MUST_CHECK int overview_open(const struct recording *recording, const char *digest,
-                             const char *path, int threads, struct overview **out,
-                             struct err *err);
+                             const char *path, int threads, struct overview **out, struct err *err);
 
 /* Stops the builders, waits for them, frees. */
 void overview_close(struct overview *overview);
@@ -41,8 +40,8 @@ enum overview_answer {
 
 /* Extremes of samples [first, first + count) of a channel; NaN when all are missing. Ends that do
  * not fall on a block are read from the recording itself (at most 2 * OVERVIEW_BLOCK samples). */
-enum overview_answer overview_minmax(const struct overview *overview, size_t channel,
-                                     int64_t first, int64_t count, float *low, float *high);
+enum overview_answer overview_minmax(const struct overview *overview, size_t channel, int64_t first,
+                                     int64_t count, float *low, float *high);
 
 /* done == total when finished. A failure of a builder or of writing is in *why (code 0 = none). */
 void overview_progress(const struct overview *overview, int64_t *done, int64_t *total,

@@ -70,8 +70,8 @@ int64_t trace_time_ns(const struct trace *trace, int64_t sample);
 
 /* The value that stands at `at_ns`: the nearest sample within half a period in a run, the last
  * one in a step trace (age_ns says how old, 0 otherwise). NaN where there is none. */
-MUST_CHECK int trace_value_at(const struct trace *trace, int64_t at_ns, float *out,
-                              int64_t *age_ns, struct err *err);
+MUST_CHECK int trace_value_at(const struct trace *trace, int64_t at_ns, float *out, int64_t *age_ns,
+                              struct err *err);
 
 /* A trace that owns its samples in memory, e.g. a derived one: takes over `samples` (malloc) and
  * copies name, unit and runs. */

@@ -64,10 +64,10 @@ Test(base, numbers_are_read_whole_or_not_at_all)
         const char *text;
         bool good;
         double value;
-    } rows[] = {{"1.5", true, 1.5},  {" -2e3 ", true, -2000}, {"", false, 0},
-                {"1.5x", false, 0},  {"0x10", false, 0},      {"nan", false, 0},
-                {"inf", false, 0},   {"1e999", false, 0},     {"1,5", false, 0},
-                {"1 2", false, 0},   {"+.5", true, 0.5},      {"-", false, 0}};
+    } rows[] = {{"1.5", true, 1.5}, {" -2e3 ", true, -2000}, {"", false, 0},
+                {"1.5x", false, 0}, {"0x10", false, 0},      {"nan", false, 0},
+                {"inf", false, 0},  {"1e999", false, 0},     {"1,5", false, 0},
+                {"1 2", false, 0},  {"+.5", true, 0.5},      {"-", false, 0}};
     for (size_t i = 0; i < sizeof rows / sizeof *rows; i++) {
         double value = 0;
         bool good = number_parse(rows[i].text, &value);
@@ -159,7 +159,8 @@ Test(base, times_as_typed)
     cr_assert(iso_parse("2031-05-20T22:00:00", &iso));
     cr_assert_eq(time_arg_parse("01:00", &arg, &err), 0);
     cr_expect_eq(time_arg_resolve(&arg, iso.ns, 0), 3 * NS_PER_HOUR);
-    static const char *const bad[] = {"", "9", "25:00", "+x", "2031-02-30T00:00", "+1:2:3:4", "+-5"};
+    static const char *const bad[] = {"",         "9",  "25:00", "+x", "2031-02-30T00:00",
+                                      "+1:2:3:4", "+-5"};
     for (size_t i = 0; i < sizeof bad / sizeof *bad; i++)
         cr_expect_neq(time_arg_parse(bad[i], &arg, &err), 0, "'%s'", bad[i]);
     cr_expect(day_time_parse("23:59:59.9", &day) && day == 86399900 * NS_PER_MS);
