@@ -61,6 +61,8 @@ struct stored_recording {
     int64_t id;
     const char *path; /* as attached, absolute */
     int64_t size;
+    int64_t modified_ns; /* the file's time of last change when its digest was last taken; while
+                            it and the size stand, the digest need not be taken again */
     char digest[DIGEST_TEXT_SIZE];
     const char *options;    /* reader options, one "name=value" a line; "" */
     int64_t start_civil_ns; /* of the recording's own clock; NS_NONE = file says none */
@@ -69,9 +71,10 @@ struct stored_recording {
 /* Sets *id. The same digest twice is ERR_CONFLICT. */
 MUST_CHECK int store_recording_add(struct store *store, const struct stored_recording *recording,
                                    int64_t *id, struct err *err);
-/* A file found again elsewhere by its digest. */
-MUST_CHECK int store_recording_move(struct store *store, int64_t id, const char *path,
-                                    struct err *err);
+/* The same file by its digest, found at `path` (maybe elsewhere than before) with another time of
+ * last change. A new path is a history row; a new time alone is not, as nothing was changed. */
+MUST_CHECK int store_recording_found(struct store *store, int64_t id, const char *path,
+                                     int64_t modified_ns, struct err *err);
 /* Array in attach order, valid until the next change of recordings or store_close(). */
 MUST_CHECK int store_recordings(struct store *store, const struct stored_recording **out,
                                 size_t *count, struct err *err);
