@@ -1,0 +1,84 @@
+/*
+ * locate.c - finding the file of an attached recording again, and telling a moved file from a
+ * changed one. Reads digests only when size or time of last change say that it must.
+ */
+#include <dirent.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+#include <sys/stat.h>
+
+#include "case/casefile_impl.h"
+
+int file_state(const char *path, int64_t *size, int64_t *modified_ns, struct err *err)
+{
+    struct stat stat_now;
+    if (stat(path, &stat_now) < 0)
+        return err_errno(err, path, "find it");
+    *size = stat_now.st_size;
+    *modified_ns = (int64_t)stat_now.st_mtim.tv_sec * NS_PER_S + stat_now.st_mtim.tv_nsec;
+    return ERR_OK;
+}
+
+/* Is the file at `path` the stored one? The store is told where and when it was seen. */
+static bool is_it(struct casefile *casefile, const struct stored_recording *stored,
+                  const char *path)
+{
+    int64_t size = 0, modified_ns = 0;
+    char digest[DIGEST_TEXT_SIZE];
+    if (file_state(path, &size, &modified_ns, NULL) || size != stored->size)
+        return false;
+    if (modified_ns == stored->modified_ns && strcmp(path, stored->path) == 0)
+        return true;
+    if (digest_file(path, NULL, digest, NULL) || strcmp(digest, stored->digest) != 0)
+        return false;
+    /* Only saves the next opening a digest; where it cannot be kept, it is taken again. */
+    int kept = !store_writable(casefile->store) ||
+               store_recording_found(casefile->store, stored->id, path, modified_ns, NULL);
+    (void)kept;
+    return true;
+}
+
+/* Any file in the case's folder of the right size and digest. */
+static char *search_beside(struct casefile *casefile, const struct stored_recording *stored)
+{
+    char *folder = path_beside(casefile->path, ".");
+    DIR *listing = folder ? opendir(folder) : NULL;
+    free(folder);
+    char *found = NULL;
+    for (struct dirent *entry; listing && !found && (entry = readdir(listing));) {
+        char *path = path_beside(casefile->path, entry->d_name);
+        struct stat state;
+        if (path && stat(path, &state) == 0 && S_ISREG(state.st_mode) &&
+            is_it(casefile, stored, path))
+            found = path;
+        else
+            free(path);
+    }
+    if (listing)
+        (void)closedir(listing);
+    return found;
+}
+
+int locate_recording(struct casefile *casefile, const struct stored_recording *stored, char **path,
+                     struct err *err)
+{
+    int64_t size, modified_ns;
+    if (is_it(casefile, stored, stored->path)) {
+        *path = strdup(stored->path);
+        return *path ? ERR_OK : err_memory(err, stored->path);
+    }
+    char *found = search_beside(casefile, stored);
+    if (found) {
+        *path = found;
+        return ERR_OK;
+    }
+    if (file_state(stored->path, &size, &modified_ns, NULL) == ERR_OK)
+        return err_set(err, ERR_CONFLICT,
+                       "%s: changed since it was attached (its digest differs); put the original "
+                       "back, or attach the new file as another recording",
+                       stored->path);
+    return err_set(err, ERR_NOT_FOUND,
+                   "%s: not there any more; put it back, or beside the case under any name",
+                   stored->path);
+}
