@@ -10,7 +10,10 @@
 #include "base/str.h"
 
 /* One line a method: derivation_NAME is defined in the method's own file. */
-#define METHODS(X) X(channel)
+#define METHODS(X) \
+    X(channel)     \
+    X(beats)       \
+    X(heart_rate)
 
 #define DECLARE(name) extern const struct derivation derivation_##name;
 #define ENTER(name)   &derivation_##name,
