@@ -14,6 +14,7 @@
 #include <stddef.h>
 
 #include "base/err.h"
+#include "case/casefile.h"
 
 enum { EXIT_DONE = 0, EXIT_FINDINGS = 1, EXIT_FAILED = 2 };
 enum { OPTION_MAX = 24 };
@@ -35,6 +36,8 @@ struct arguments {
     size_t count;
     const char **values[OPTION_MAX]; /* one list per option in spec order */
     size_t value_count[OPTION_MAX];
+    const char **pool; /* memory of args and values */
+    bool help;         /* --help was given: print it instead of running */
 };
 
 struct command {
@@ -57,5 +60,48 @@ const char *const *argument_all(const struct arguments *arguments, const char *n
 
 /* Prints "incisura COMMAND: TEXT" on stderr; returns EXIT_FAILED. */
 int command_fail(const struct arguments *arguments, const struct err *err);
+
+/* Options that several commands share: their specs, for use inside an option list. */
+#define OPTION_RATER                                                          \
+    {                                                                         \
+        "rater", "ID", false, "who does this; default: the rater of the case" \
+    }
+#define OPTION_JSON                                 \
+    {                                               \
+        "json", NULL, false, "print one JSON value" \
+    }
+#define OPTION_RATE                                                                   \
+    {                                                                                 \
+        "rate", "HZ", false, "samples a second, for a CSV file without a time column" \
+    }
+#define OPTION_UNIT                                                                     \
+    {                                                                                   \
+        "unit", "LABEL=UNIT", true, "unit of a CSV column whose header does not say it" \
+    }
+#define OPTION_ROLE                                                             \
+    {                                                                           \
+        "role", "LABEL=ROLE", true,                                             \
+            "what a channel is (ecg, abp, eda ...) when its label does not say" \
+    }
+
+/* Opens args[0] as a case (or, in STORE_READ mode, a bare recording, with the reader options of
+ * the command line when the command has them). "NAME" stands for NAME.case when only that exists.
+ * --rater is used when the command has it. */
+MUST_CHECK int command_open(const struct arguments *arguments, enum store_mode mode,
+                            struct casefile **out, struct err *err);
+
+/* The case named by args[0], its store alone, for reading. */
+MUST_CHECK int command_open_store(const struct arguments *arguments, struct store **out,
+                                  struct err *err);
+
+/* --rate, --unit and --role as reader options; lists point into `arguments`. */
+MUST_CHECK int command_reader_options(const struct arguments *arguments, struct reader_options *out,
+                                      struct err *err);
+
+/* A bar on stderr for a long job, on a terminal only. Runs on a thread of its own between begin
+ * and end, so that the job only counts. */
+struct progress_line;
+struct progress_line *progress_line_begin(const char *what, struct progress *progress);
+void progress_line_end(struct progress_line *line); /* NULL is allowed */
 
 #endif

@@ -1,0 +1,121 @@
+/*
+ * common.c - what several commands do: failing, opening what is named first, showing progress.
+ */
+#include <pthread.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+#include <time.h>
+#include <unistd.h>
+
+#include "base/str.h"
+#include "command/command.h"
+
+int command_fail(const struct arguments *arguments, const struct err *err)
+{
+    (void)fprintf(stderr, "incisura %s: %s\n", arguments->command->name, err->text);
+    return EXIT_FAILED;
+}
+
+int command_reader_options(const struct arguments *arguments, struct reader_options *out,
+                           struct err *err)
+{
+    struct reader_options made = {0};
+    const char *rate = argument(arguments, "rate");
+    if (rate && (!number_parse(rate, &made.rate_hz) || made.rate_hz <= 0))
+        return err_set(err, ERR_USAGE, "--rate '%s' is not a number of samples a second", rate);
+    made.units = argument_all(arguments, "unit", &made.unit_count);
+    made.roles = argument_all(arguments, "role", &made.role_count);
+    *out = made;
+    return ERR_OK;
+}
+
+/* args[0], or that with ".case" when only such a file exists. */
+static int named_path(const struct arguments *arguments, struct str *path, struct err *err)
+{
+    const char *name = arguments->args[0];
+    str_put(path, name);
+    if (access(name, F_OK) != 0 && !path_has_suffix(name, ".case"))
+        str_put(path, ".case");
+    if (str_failed(path))
+        return err_memory(err, name);
+    if (access(str_text(path), F_OK) != 0)
+        return err_set(err, ERR_IO, "%s: no such case or recording; check the name", name);
+    return ERR_OK;
+}
+
+int command_open(const struct arguments *arguments, enum store_mode mode, struct casefile **out,
+                 struct err *err)
+{
+    struct reader_options options;
+    struct str path = {0};
+    int failed = command_reader_options(arguments, &options, err);
+    if (!failed)
+        failed = named_path(arguments, &path, err);
+    if (!failed)
+        failed =
+            casefile_open(str_text(&path), mode, argument(arguments, "rater"), &options, out, err);
+    str_free(&path);
+    return failed;
+}
+
+int command_open_store(const struct arguments *arguments, struct store **out, struct err *err)
+{
+    struct str path = {0};
+    int failed = named_path(arguments, &path, err);
+    if (!failed)
+        failed = store_open(str_text(&path), STORE_READ, NULL, out, err);
+    str_free(&path);
+    return failed;
+}
+
+struct progress_line {
+    const char *what;
+    struct progress *progress;
+    pthread_t thread;
+    atomic_bool stop;
+};
+
+/* Quiet for the first second: most jobs are done by then. */
+static void *show(void *context)
+{
+    struct progress_line *line = context;
+    bool shown = false;
+    for (int tick = 0; !atomic_load(&line->stop); tick++) {
+        (void)nanosleep(&(struct timespec){0, 50 * NS_PER_MS}, NULL);
+        int64_t total = atomic_load(&line->progress->total);
+        int64_t done = atomic_load(&line->progress->done);
+        if (tick < 20 || tick % 4 != 0 || total <= 0)
+            continue;
+        (void)fprintf(stderr, "\r%s %3d %%", line->what, (int)mul_div(done, 100, total));
+        shown = true;
+    }
+    if (shown)
+        (void)fprintf(stderr, "\r\033[K");
+    return NULL;
+}
+
+struct progress_line *progress_line_begin(const char *what, struct progress *progress)
+{
+    if (!isatty(STDERR_FILENO))
+        return NULL;
+    struct progress_line *line = calloc(1, sizeof *line);
+    if (!line)
+        return NULL;
+    line->what = what;
+    line->progress = progress;
+    if (pthread_create(&line->thread, NULL, show, line) != 0) {
+        free(line);
+        return NULL;
+    }
+    return line;
+}
+
+void progress_line_end(struct progress_line *line)
+{
+    if (!line)
+        return;
+    atomic_store(&line->stop, true);
+    (void)pthread_join(line->thread, NULL);
+    free(line);
+}

@@ -1,0 +1,120 @@
+/*
+ * mark_entry.c - typed text to a mark. Stores nothing.
+ */
+#include "command/mark_entry.h"
+
+#include <stdlib.h>
+#include <string.h>
+
+#include "base/str.h"
+#include "codebook/unit.h"
+
+enum { UNIT_SIZE = 64 };
+
+static bool given(const char *text)
+{
+    return text && *text;
+}
+
+const struct code *code_by_text(const struct codebook *codebook, const char *text)
+{
+    const struct code *code = codebook_find(codebook, text);
+    for (size_t i = 0; i < codebook_count(codebook) && !code; i++) {
+        const struct code *at = codebook_at(codebook, i);
+        if (ascii_equal(at->label, text) || ascii_equal(at->code, text))
+            code = at;
+    }
+    return code;
+}
+
+enum mark_state mark_state_of(const struct code *code, const struct mark *mark)
+{
+    bool wants_value =
+        code->kind == CODE_DOSE || code->kind == CODE_RATE || code->kind == CODE_SETTING;
+    bool lacks = (wants_value && !mark->has_value) ||
+                 (code->kind == CODE_SPAN && mark->until_ns == NS_NONE) ||
+                 (code->kind == CODE_NOTE && !given(mark->note));
+    return lacks ? MARK_INCOMPLETE : MARK_MARKED;
+}
+
+/* The codes that look most like what was typed: those with the same first letter. */
+static int no_such_code(const struct codebook *codebook, const char *text, struct err *err)
+{
+    struct str list = {0};
+    size_t listed = 0;
+    for (size_t i = 0; i < codebook_count(codebook) && listed < 8; i++) {
+        const char *code = codebook_at(codebook, i)->code;
+        char first[2] = {text[0], '\0'};
+        if (ascii_starts(code, first)) {
+            str_putf(&list, "%s%s", listed ? ", " : "; with that letter: ", code);
+            listed++;
+        }
+    }
+    int failed =
+        err_set(err, ERR_NOT_FOUND, "no code '%s' in the case's codebook%s", text, str_text(&list));
+    str_free(&list);
+    return failed;
+}
+
+static int take_unit(const char *text, const struct code *code, struct arena *arena,
+                     struct mark *out, struct err *err)
+{
+    if (!given(text)) {
+        out->unit = code->unit;
+        return ERR_OK;
+    }
+    char unit[UNIT_SIZE];
+    unit_normalise(text, unit, sizeof unit);
+    if (!unit_valid(unit))
+        return err_set(err, ERR_USAGE,
+                       "unit '%s' is not a UCUM code; write mg, ug/kg/min, mm[Hg], %% ...", text);
+    char *copy = arena_string(arena, unit);
+    out->unit = copy;
+    return copy ? ERR_OK : err_memory(err, "a unit");
+}
+
+static int take_value(const struct mark_text *text, const struct code *code, struct arena *arena,
+                      struct mark *out, struct err *err)
+{
+    out->unit = "";
+    if (!given(text->value)) {
+        if (given(text->unit))
+            return err_set(err, ERR_USAGE, "a unit without a value; give both");
+        return ERR_OK;
+    }
+    if (!number_parse_comma(text->value, &out->value))
+        return err_set(err, ERR_USAGE, "value '%s' is not a number", text->value);
+    out->has_value = true;
+    return take_unit(text->unit, code, arena, out, err);
+}
+
+int mark_entry(const struct casefile *casefile, const struct mark_text *text, struct arena *arena,
+               struct mark *out, struct err *err)
+{
+    const struct codebook *codebook = casefile_codebook(casefile);
+    const struct code *code = code_by_text(codebook, text->code);
+    if (!code)
+        return no_such_code(codebook, text->code, err);
+    struct mark made = {
+        .code = code->code,
+        .until_ns = NS_NONE,
+        .route = given(text->route) ? text->route : "",
+        .note = given(text->note) ? text->note : "",
+        .stamp_clock = "",
+        .stamp_ns = NS_NONE,
+        .stamp_utc_ns = NS_NONE,
+    };
+    int failed = casefile_time(casefile, text->at, &made.onset_ns, err);
+    if (!failed && given(text->until))
+        failed = casefile_time(casefile, text->until, &made.until_ns, err);
+    if (!failed && made.until_ns != NS_NONE && made.until_ns < made.onset_ns)
+        failed =
+            err_set(err, ERR_USAGE, "'%s' ends before it begins (%s)", text->code, text->until);
+    if (!failed)
+        failed = take_value(text, code, arena, &made, err);
+    if (failed)
+        return failed;
+    made.state = mark_state_of(code, &made);
+    *out = made;
+    return ERR_OK;
+}

@@ -1,0 +1,27 @@
+/*
+ * mark_entry.h - making a mark out of typed text: code, times, value, unit, checked against the
+ * codebook. Shared by `mark` and `import`.
+ */
+#ifndef COMMAND_MARK_ENTRY_H
+#define COMMAND_MARK_ENTRY_H
+
+#include "base/arena.h"
+#include "case/casefile.h"
+
+/* As typed; NULL or "" where nothing was. */
+struct mark_text {
+    const char *code, *at, *until, *value, *unit, *route, *note;
+};
+
+/* Fills *out (strings point into `text`, the codebook or `arena`). A dose, rate or setting without
+ * value, or a span without end, is MARK_INCOMPLETE. */
+MUST_CHECK int mark_entry(const struct casefile *casefile, const struct mark_text *text,
+                          struct arena *arena, struct mark *out, struct err *err);
+
+/* A code by its code or, in any letter case, by its label; NULL when there is none. */
+const struct code *code_by_text(const struct codebook *codebook, const char *text);
+
+/* Whether a mark of this kind still lacks what its code asks for. */
+enum mark_state mark_state_of(const struct code *code, const struct mark *mark);
+
+#endif

@@ -1,0 +1,115 @@
+/*
+ * topics.c - the topics of `incisura help TOPIC`. Tables are printed from the code's own.
+ */
+#include <stdio.h>
+#include <string.h>
+
+#include "codebook/codebook.h"
+#include "command/command_impl.h"
+#include "physiology/derivation.h"
+#include "recording/reader.h"
+
+static void print_times(FILE *to)
+{
+    (void)fputs("A time is written in one of these ways:\n"
+                "  09:41:12.250           time of day; taken from 6 h before to 18 h after the\n"
+                "                         case's start, so that a night case works\n"
+                "  +00:34:07.5  +2047.5   from the case's start: the start of its first\n"
+                "                         recording, fixed once\n"
+                "  2031-05-20T09:41:12    date and time on the theatre's wall clock\n"
+                "  2031-05-20T07:41:12Z   the same in UTC, or with an offset: +02:00\n"
+                "A span is written 10s, 250ms, 2min or 1h.\n",
+                to);
+}
+
+static void print_formats(FILE *to)
+{
+    (void)fputs("Recordings are recognised by their first bytes or their name:\n", to);
+    for (size_t i = 0; readers[i]; i++)
+        (void)fprintf(to, "  %-8s %s\n", readers[i]->name, readers[i]->suffixes);
+    (void)fputs("They are read in place and never written to.\n", to);
+}
+
+static void print_roles(FILE *to)
+{
+    (void)fputs("A role says what a channel is; derivations ask for it. It comes from the label\n"
+                "(`incisura inspect` says why) or from --role LABEL=ROLE, never from the samples.\n"
+                "Roles:",
+                to);
+    for (int role = 0; role < ROLE_COUNT; role++)
+        (void)fprintf(to, " %s", role_name((enum role)role));
+    (void)fputc('\n', to);
+}
+
+static void print_codebook(FILE *to)
+{
+    (void)fputs("A codebook is a CSV table, one code a line, edited in a spreadsheet. Columns:\n"
+                "  code        letters, digits, - and _; what exports carry\n"
+                "  label       what people read; empty = the code\n"
+                "  key         one letter, each used once; small and capital letters differ\n"
+                "  kind        point, span, dose, rate, setting, note or sync\n"
+                "  unit        UCUM, for doses, rates and settings: mg, ug/kg/min, mm[Hg]\n"
+                "  class       group on the screen; drug classes have the colours of ISO 26825\n"
+                "  pairs-with  a code that must follow this one\n"
+                "  required    yes, when a case without it is incomplete\n"
+                "  help        one sentence\n"
+                "A bad codebook is refused with its line and column. The default one:\n",
+                to);
+    (void)fwrite(default_codebook_text, 1, default_codebook_size, to);
+}
+
+static void print_parameter(FILE *to, const struct parameter *parameter)
+{
+    (void)fprintf(to, "    %s=", parameter->name);
+    if (parameter->choices)
+        (void)fprintf(to, "%s", parameter->choices);
+    else
+        (void)fprintf(to, "%g %s (%g to %g)", parameter->standard, parameter->unit,
+                      parameter->least, parameter->greatest);
+    (void)fprintf(to, "  %s\n", parameter->help);
+}
+
+static void print_derivations(FILE *to)
+{
+    for (size_t i = 0; derivations[i]; i++) {
+        const struct derivation *d = derivations[i];
+        (void)fprintf(to, "%s  %s, from %s%s%s%s\n", d->name,
+                      d->kind == DERIVES_TRACE ? "trace" : "event train",
+                      d->needs_train ? d->needs_train : role_name(d->role),
+                      d->one_channel ? " (one channel)" : "", d->unit ? ", in " : "",
+                      d->unit ? d->unit : "");
+        (void)fprintf(to, "    %s\n    source: %s\n    edges: %s\n", d->summary, d->source,
+                      d->edges);
+        for (size_t k = 0; d->parameters && d->parameters[k].name; k++)
+            print_parameter(to, &d->parameters[k]);
+    }
+}
+
+static void print_recipe(FILE *to)
+{
+    (void)fputs(
+        "A recipe is an INI file that says which windows to export:\n\n"
+        "  [events]\n"
+        "  codes = incision, intubation     or * for all\n"
+        "  [window]\n"
+        "  before = 30\n"
+        "  after = 60                       seconds\n"
+        "  rate = 4                         samples a second in the tables\n"
+        "  baseline = -30..-5               seconds from the mark\n"
+        "  valid = 0.8                      least share of valid samples\n"
+        "  [signals]\n"
+        "  hr = heart-rate\n"
+        "  skin = channel \"EDA\"             NAME = DERIVATION \"CHANNEL\" name=value ...\n",
+        to);
+}
+
+const struct topic topics[] = {
+    {"times", "how times and spans are written", print_times},
+    {"formats", "recordings that can be read", print_formats},
+    {"roles", "what a channel can be", print_roles},
+    {"codebook", "the list of events, and the default one", print_codebook},
+    {"derivations", "derived traces and event trains, with parameters and sources",
+     print_derivations},
+    {"recipe", "which windows to export", print_recipe},
+    {NULL, NULL, NULL},
+};
