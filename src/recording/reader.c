@@ -1,0 +1,8 @@
+/*
+ * reader.c - the readers table. To add a format, add its line.
+ */
+#include "recording/reader.h"
+
+extern const struct reader edf_reader;
+
+const struct reader *const readers[] = {&edf_reader, NULL};
