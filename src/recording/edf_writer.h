@@ -60,8 +60,8 @@ MUST_CHECK int edf_writer_sync(struct edf_writer *writer, struct err *err);
 
 int64_t edf_writer_clipped(const struct edf_writer *writer); /* samples out of range or NaN */
 
-/* Writes the record count, syncs, closes and frees. Annotations that found no room go into extra
- * records of the last channel values only if `discontinuous`; otherwise it is an error. */
+/* Writes the record count, syncs, closes and frees. Annotations that found no room are an error
+ * (the rest of the file is good, with a count of -1). */
 MUST_CHECK int edf_writer_close(struct edf_writer *writer, struct err *err);
 /* Closes without patching the count, as a crash would. */
 void edf_writer_abandon(struct edf_writer *writer);
