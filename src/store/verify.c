@@ -1,0 +1,146 @@
+/*
+ * verify.c - is the case what its history says? First the chain, then every mark, recording and
+ * header field against the state that replaying the rows gives.
+ */
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+
+#include "store/store_impl.h"
+
+/* State by replay: JSON objects by id. */
+struct replay {
+    struct store *store;
+    json_t *header, *marks, *recordings;
+    bool failed;
+};
+
+static json_t *slot(json_t *table, int64_t id)
+{
+    char key[24];
+    (void)snprintf(key, sizeof key, "%lld", (long long)id);
+    json_t *found = json_object_get(table, key);
+    if (!found && json_object_set_new(table, key, json_object()) == 0)
+        found = json_object_get(table, key);
+    return found;
+}
+
+static int replay_row(const struct history_row *row, void *context)
+{
+    struct replay *replay = context;
+    json_t *into = NULL;
+    if (strncmp(row->action, "mark-", 5) == 0 || strcmp(row->action, "undo") == 0 ||
+        strcmp(row->action, "redo") == 0)
+        into = slot(replay->marks, row->object);
+    else if (strcmp(row->action, "attach") == 0 || strcmp(row->action, "found") == 0)
+        into = slot(replay->recordings, row->object);
+    else if (strcmp(row->action, "create") == 0 || strcmp(row->action, "epoch") == 0)
+        into = replay->header;
+    else
+        return ERR_OK;
+    json_t *after = json_loads(row->after, 0, NULL);
+    replay->failed |= !into || !after || json_object_update(into, after) != 0;
+    json_decref(after);
+    return ERR_OK;
+}
+
+static int tell(struct store *store, const char *what, int64_t id, const char *field,
+                const json_t *is, const json_t *said, struct err *err)
+{
+    char *a = is ? json_dumps(is, JSON_ENCODE_ANY | JSON_COMPACT) : NULL;
+    char *b = said ? json_dumps(said, JSON_ENCODE_ANY | JSON_COMPACT) : NULL;
+    int failed =
+        err_set(err, ERR_CONFLICT, "%s: %s %lld: %s is %.120s, the history says %.120s",
+                store->path, what, (long long)id, field, a ? a : "nothing", b ? b : "nothing");
+    free(a);
+    free(b);
+    return failed;
+}
+
+/* Compares one object with the replayed one, and takes it out of the replay. */
+static int compare(struct store *store, const char *what, int64_t id, json_t *table, json_t *is,
+                   struct err *err)
+{
+    char key[24];
+    const char *field;
+    json_t *value;
+    (void)snprintf(key, sizeof key, "%lld", (long long)id);
+    json_t *said = json_object_get(table, key);
+    if (!is)
+        return err_memory(err, "verifying");
+    int failed = ERR_OK;
+    if (!said)
+        failed = err_set(err, ERR_CONFLICT, "%s: %s %lld is not in the history", store->path, what,
+                         (long long)id);
+    json_object_foreach(is, field, value)
+    {
+        if (!failed && !json_equal(value, json_object_get(said, field)))
+            failed = tell(store, what, id, field, value, json_object_get(said, field), err);
+    }
+    if (!failed)
+        (void)json_object_del(table, key);
+    json_decref(is);
+    return failed;
+}
+
+static int none_left(struct store *store, const char *what, json_t *table, struct err *err)
+{
+    void *first = json_object_iter(table);
+    if (!first)
+        return ERR_OK;
+    return err_set(err, ERR_CONFLICT, "%s: %s %s is in the history and not in the case any more",
+                   store->path, what, json_object_iter_key(first));
+}
+
+static int compare_all(struct store *store, struct replay *replay, struct err *err)
+{
+    const struct mark *marks;
+    const struct stored_recording *recordings;
+    size_t mark_count, recording_count;
+    marks_forget(store);
+    store->recordings_known = false;
+    int failed = store_marks(store, &marks, &mark_count, err);
+    if (!failed)
+        failed = store_recordings(store, &recordings, &recording_count, err);
+    for (size_t i = 0; !failed && i < mark_count; i++)
+        failed = compare(store, "mark", marks[i].id, replay->marks, mark_to_json(&marks[i]), err);
+    for (size_t i = 0; !failed && i < recording_count; i++)
+        failed = compare(store, "recording", recordings[i].id, replay->recordings,
+                         recording_to_json(&recordings[i]), err);
+    if (!failed)
+        failed = none_left(store, "mark", replay->marks, err);
+    if (!failed)
+        failed = none_left(store, "recording", replay->recordings, err);
+    if (failed)
+        return failed;
+    json_t *header = json_object();
+    if (!header || json_object_set(header, "0", replay->header) != 0)
+        failed = err_memory(err, "verifying");
+    if (!failed)
+        failed = compare(store, "case", 0, header, header_to_json(&store->header), err);
+    json_decref(header);
+    return failed;
+}
+
+int store_verify(struct store *store, int64_t *rows, int64_t *bad_seq, char head[DIGEST_TEXT_SIZE],
+                 struct err *err)
+{
+    uint8_t digest[DIGEST_SIZE];
+    struct replay replay = {store, json_object(), json_object(), json_object(), false};
+    *bad_seq = 0;
+    int failed = replay.header && replay.marks && replay.recordings
+                     ? history_check(store, rows, bad_seq, digest, err)
+                     : err_memory(err, "verifying");
+    if (!failed)
+        failed = store_history(store, replay_row, &replay, err);
+    if (!failed && replay.failed)
+        failed = err_set(err, ERR_CONFLICT, "%s: a history row cannot be read", store->path);
+    if (!failed)
+        failed = compare_all(store, &replay, err);
+    if (!failed && head)
+        digest_text(digest, head);
+    json_decref(replay.header);
+    json_decref(replay.marks);
+    json_decref(replay.recordings);
+    return failed;
+}
