@@ -240,10 +240,36 @@ static void ready(void)
         return;
 }
 
-void digest_bytes(const void *data, size_t size, uint8_t out[DIGEST_SIZE])
+static crypto_generichash_state *state_of(struct digester *digester)
+{
+    _Static_assert(sizeof(crypto_generichash_state) <= sizeof digester->state,
+                   "digester too small");
+    return (crypto_generichash_state *)(void *)digester->state;
+}
+
+/* With these sizes and no key, the calls below cannot fail. */
+void digester_begin(struct digester *digester)
 {
     ready();
-    (void)crypto_generichash(out, DIGEST_SIZE, data, size, NULL, 0);
+    (void)crypto_generichash_init(state_of(digester), NULL, 0, DIGEST_SIZE);
+}
+
+void digester_add(struct digester *digester, const void *data, size_t size)
+{
+    (void)crypto_generichash_update(state_of(digester), data, size);
+}
+
+void digester_end(struct digester *digester, uint8_t out[DIGEST_SIZE])
+{
+    (void)crypto_generichash_final(state_of(digester), out, DIGEST_SIZE);
+}
+
+void digest_bytes(const void *data, size_t size, uint8_t out[DIGEST_SIZE])
+{
+    struct digester digester;
+    digester_begin(&digester);
+    digester_add(&digester, data, size);
+    digester_end(&digester, out);
 }
 
 void digest_text(const uint8_t digest[DIGEST_SIZE], char out[DIGEST_TEXT_SIZE])
@@ -261,9 +287,8 @@ int digest_file(const char *path, struct progress *progress, char out[DIGEST_TEX
         return failed;
     progress_total(progress, stat.st_size);
     uint8_t *buffer = malloc(DIGEST_STEP), digest[DIGEST_SIZE];
-    crypto_generichash_state state;
-    ready();
-    (void)crypto_generichash_init(&state, NULL, 0, DIGEST_SIZE);
+    struct digester digester;
+    digester_begin(&digester);
     if (!buffer)
         failed = err_memory(err, "a digest");
     while (!failed) {
@@ -277,10 +302,10 @@ int digest_file(const char *path, struct progress *progress, char out[DIGEST_TEX
         else if (progress_cancelled(progress))
             failed = err_set(err, ERR_CANCELLED, "%s: stopped while reading", path);
         else
-            (void)crypto_generichash_update(&state, buffer, (unsigned long long)got);
+            digester_add(&digester, buffer, (size_t)got);
         progress_add(progress, got > 0 ? got : 0);
     }
-    (void)crypto_generichash_final(&state, digest, DIGEST_SIZE);
+    digester_end(&digester, digest);
     free(buffer);
     (void)close(fd);
     if (!failed)

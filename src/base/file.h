@@ -75,6 +75,13 @@ MUST_CHECK int folder_sync(const char *path, struct err *err);
 enum { DIGEST_SIZE = 32, DIGEST_TEXT_SIZE = 65 };
 MUST_CHECK int digest_file(const char *path, struct progress *progress, char out[DIGEST_TEXT_SIZE],
                            struct err *err);
+/* The same of bytes that come piece by piece. */
+struct digester {
+    _Alignas(64) uint8_t state[384];
+};
+void digester_begin(struct digester *digester);
+void digester_add(struct digester *digester, const void *data, size_t size);
+void digester_end(struct digester *digester, uint8_t out[DIGEST_SIZE]);
 void digest_bytes(const void *data, size_t size, uint8_t out[DIGEST_SIZE]);
 void digest_text(const uint8_t digest[DIGEST_SIZE], char out[DIGEST_TEXT_SIZE]);
 

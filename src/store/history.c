@@ -6,7 +6,6 @@
  * and UTF-8. d_0 is 32 zero bytes, d_i = BLAKE2b-256(d_{i-1} || row i) (RFC 7693). Lengths in
  * front, so that no two different rows have the same bytes.
  */
-#include <sodium.h>
 #include <stdlib.h>
 #include <string.h>
 
@@ -17,11 +16,11 @@
 void chain_next(const uint8_t previous[DIGEST_SIZE], const void *row, size_t size,
                 uint8_t out[DIGEST_SIZE])
 {
-    crypto_generichash_state state;
-    (void)crypto_generichash_init(&state, NULL, 0, DIGEST_SIZE);
-    (void)crypto_generichash_update(&state, previous, DIGEST_SIZE);
-    (void)crypto_generichash_update(&state, row, size);
-    (void)crypto_generichash_final(&state, out, DIGEST_SIZE);
+    struct digester digester;
+    digester_begin(&digester);
+    digester_add(&digester, previous, DIGEST_SIZE);
+    digester_add(&digester, row, size);
+    digester_end(&digester, out);
 }
 
 struct row {

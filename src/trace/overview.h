@@ -4,8 +4,9 @@
  *
  * Level 0 holds the extremes of OVERVIEW_BLOCK samples each, each further level of OVERVIEW_FAN
  * blocks of the one below. Built by background threads straight from the recording; kept in a
- * file beside the case (safe to delete, rebuilt when the recording's digest or size differ), and
- * usable while it is being built: what is not there yet is said to be missing, never zero.
+ * file beside the case (safe to delete; rebuilt when the recording's digest or size differ, or when
+ * its own digest does not match), and usable while it is being built or checked: what is not there
+ * yet is said to be missing, never zero.
  *
  * Threads: overview_minmax() may be called from any thread while the builders run.
  */
@@ -20,7 +21,7 @@
 #include "base/progress.h"
 #include "recording/recording.h"
 
-enum { OVERVIEW_BLOCK = 256, OVERVIEW_FAN = 16 };
+enum { OVERVIEW_BLOCK = 256, OVERVIEW_FAN = 16, OVERVIEW_LEVELS = 3 };
 
 struct overview;
 
