@@ -100,10 +100,11 @@ static void build(struct overview *overview)
     }
 }
 
+/* Whoever closes an overview does not wait for a file that can be built again. */
 static void finish(struct overview *overview)
 {
     struct err err = {0};
-    bool whole = atomic_load(&overview->done) == overview->total;
+    bool whole = atomic_load(&overview->done) == overview->total && !atomic_load(&overview->stop);
     if (whole && overview->path && overview_file_save(overview, &err))
         remember(overview, &err);
 }
@@ -228,9 +229,13 @@ int overview_open(const struct recording *recording, const char *digest, const c
     return failed;
 }
 
+/* The first builder goes first: until it has ended it may still start the others. */
 void overview_wait(struct overview *overview)
 {
-    for (int i = 0; i < overview->thread_count; i++) {
+    if (overview->threads[0])
+        (void)pthread_join(overview->threads[0], NULL);
+    overview->threads[0] = 0;
+    for (int i = 1; i < overview->thread_count; i++) {
         if (overview->threads[i])
             (void)pthread_join(overview->threads[i], NULL);
         overview->threads[i] = 0;
