@@ -151,8 +151,41 @@ static const char *skip_blanks(const char *text)
     return text;
 }
 
+/* [sign] digits [. digits] with at most 15 digits in all: the integer of the digits and the power
+ * of ten are both exact, so that one division rounds right (W. Clinger 1990, "How to read floating
+ * point numbers accurately"). Most numbers in most files are of this kind. */
+static bool parse_short(const char *text, double *out)
+{
+    static const double tens[] = {1e0, 1e1, 1e2,  1e3,  1e4,  1e5,  1e6,  1e7,
+                                  1e8, 1e9, 1e10, 1e11, 1e12, 1e13, 1e14, 1e15};
+    bool negative = *text == '-';
+    int64_t whole = 0;
+    int count = 0, decimals = 0;
+    if (*text == '-' || *text == '+')
+        text++;
+    for (; isdigit((unsigned char)*text); text++, count++) {
+        if (count >= 15)
+            return false;
+        whole = whole * 10 + (*text - '0');
+    }
+    if (*text == '.') {
+        for (text++; isdigit((unsigned char)*text); text++, count++, decimals++) {
+            if (count >= 15)
+                return false;
+            whole = whole * 10 + (*text - '0');
+        }
+    }
+    if (*text || count == 0)
+        return false;
+    double value = (double)whole / tens[decimals];
+    *out = negative ? -value : value;
+    return true;
+}
+
 bool number_parse(const char *text, double *out)
 {
+    if (parse_short(text, out))
+        return true;
     text = skip_blanks(text);
     /* strtod also reads "inf", "nan" and hexadecimal, none of which a recording or a person means.
      */

@@ -50,7 +50,7 @@ static json_t *channel_json(const struct channel *channel, struct range range)
                      channel->label, "unit", channel->unit, "role", role_name(channel->role),
                      "role_why", channel->role_why, "rate_hz", channel->rate_hz, "irregular",
                      channel->times_ns != NULL, "samples", (json_int_t)channel->samples, "min",
-                     finite((double)range.low), "max", number_or_null((double)range.high),
+                     number_or_null((double)range.low), "max", number_or_null((double)range.high),
                      "transducer", channel->transducer, "prefilter", channel->prefilter);
 }
 

@@ -425,7 +425,7 @@ static int make_gaps(struct edf *edf, struct err *err)
 
 static int add_annotation(struct edf *edf, const struct tal_text *text, struct err *err)
 {
-    char *copy = edf_text(&edf->base.arena, text->text, text->length);
+    char *copy = recording_text(&edf->base.arena, text->text, text->length);
     if (!copy)
         return err_memory(err, "an annotation");
     int failed = array_reserve((void **)&edf->annotations, &edf->annotation_room,
@@ -499,6 +499,11 @@ static int64_t end_ns(const struct edf *edf)
             end = run_end_ns(&channel->runs[channel->run_count - 1]);
         if (channel->times_ns && channel->samples > 0)
             end = channel->times_ns[channel->samples - 1] + 1;
+    }
+    /* Without a signal, what is annotated is what was recorded. */
+    for (size_t i = 0; edf->base.info.channel_count == 0 && i < edf->annotation_count; i++) {
+        int64_t last = edf->annotations[i].onset_ns + edf->annotations[i].span_ns;
+        end = last > end ? last : end;
     }
     return end;
 }

@@ -39,27 +39,6 @@ static const struct {
 };
 enum field { LABEL, TRANSDUCER, DIMENSION, PMIN, PMAX, DMIN, DMAX, PREFILTER, SAMPLES };
 
-char *edf_text(struct arena *arena, const uint8_t *bytes, size_t size)
-{
-    while (size > 0 && (bytes[size - 1] == ' ' || bytes[size - 1] == '\0'))
-        size--;
-    while (size > 0 && *bytes == ' ') {
-        bytes++;
-        size--;
-    }
-    size_t length = strnlen((const char *)bytes, size);
-    if (utf8_valid((const char *)bytes, length))
-        return arena_string_n(arena, (const char *)bytes, length);
-    char *text = arena_alloc(arena, 2 * length + 1, 1), *to = text;
-    for (size_t i = 0; text && i < length; i++) {
-        char wide[4];
-        size_t wrote = utf8_put(wide, bytes[i]);
-        memcpy(to, wide, wrote);
-        to += wrote;
-    }
-    return text;
-}
-
 static size_t field_at(const struct reading *reading, enum field field, size_t signal)
 {
     return EDF_FIXED_BYTES + signal_fields[field].start * reading->signal_count +
@@ -143,7 +122,7 @@ static int signal_texts(struct reading *reading, size_t index, struct edf_signal
         const uint8_t *from = reading->data + field_at(reading, text_fields[i], index);
         size_t size = signal_fields[text_fields[i]].size;
         reading->latin |= !utf8_valid((const char *)from, strnlen((const char *)from, size));
-        *texts[i] = edf_text(&reading->recording->arena, from, size);
+        *texts[i] = recording_text(&reading->recording->arena, from, size);
         if (!*texts[i])
             return err_memory(err, "a signal's texts");
     }
@@ -347,8 +326,8 @@ int edf_header_read(struct recording *recording, const uint8_t *data, size_t siz
         failed = note_oddities(&reading, &header, said_bytes, err);
     if (failed)
         return failed;
-    header.subject = edf_text(&recording->arena, data + 8, 80);
-    header.equipment = edf_text(&recording->arena, data + 88, 80);
+    header.subject = recording_text(&recording->arena, data + 8, 80);
+    header.equipment = recording_text(&recording->arena, data + 88, 80);
     if (!header.subject || !header.equipment)
         return err_memory(err, "a header");
     *out = header;

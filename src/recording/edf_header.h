@@ -45,7 +45,4 @@ struct edf_header {
 MUST_CHECK int edf_header_read(struct recording *recording, const uint8_t *data, size_t size,
                                struct edf_header *out, struct err *err);
 
-/* Text that is not UTF-8 is taken as Latin-1, which is what makers write for micro and degree. */
-MUST_CHECK char *edf_text(struct arena *arena, const uint8_t *bytes, size_t size);
-
 #endif

@@ -3,6 +3,7 @@
  */
 #include "recording/reader.h"
 
+extern const struct reader csv_reader;
 extern const struct reader edf_reader;
 
-const struct reader *const readers[] = {&edf_reader, NULL};
+const struct reader *const readers[] = {&edf_reader, &csv_reader, NULL};

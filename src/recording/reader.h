@@ -51,4 +51,8 @@ extern const struct reader *const readers[]; /* NULL-terminated; asked in order 
 MUST_CHECK int recording_note(struct recording *recording, struct err *err, const char *format, ...)
     PRINTF_LIKE(3, 4);
 
+/* A copy of a text field in the arena, blanks and NULs around it removed. What is not UTF-8 is
+ * taken as Latin-1, which is what makers write for micro and degree. NULL when out of memory. */
+MUST_CHECK char *recording_text(struct arena *arena, const uint8_t *bytes, size_t size);
+
 #endif

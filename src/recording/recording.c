@@ -36,6 +36,27 @@ int recording_note(struct recording *recording, struct err *err, const char *for
     return ERR_OK;
 }
 
+char *recording_text(struct arena *arena, const uint8_t *bytes, size_t size)
+{
+    while (size > 0 && (bytes[size - 1] == ' ' || bytes[size - 1] == '\0'))
+        size--;
+    while (size > 0 && *bytes == ' ') {
+        bytes++;
+        size--;
+    }
+    size_t length = strnlen((const char *)bytes, size);
+    if (utf8_valid((const char *)bytes, length))
+        return arena_string_n(arena, (const char *)bytes, length);
+    char *text = arena_alloc(arena, 2 * length + 1, 1), *to = text;
+    for (size_t i = 0; text && i < length; i++) {
+        char wide[4];
+        size_t wrote = utf8_put(wide, bytes[i]);
+        memcpy(to, wide, wrote);
+        to += wrote;
+    }
+    return text;
+}
+
 /* The part after "LABEL=" of the last entry for this label; NULL when there is none. Used entries
  * are counted, so that one that fits no channel can be told. */
 static const char * override(const char *const *entries, size_t count, const char *label,

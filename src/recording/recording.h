@@ -38,8 +38,8 @@ struct channel {
     int64_t samples;                   /* over all runs, missing ones included */
     const struct run *runs;            /* shape (run_count); NULL for an irregular channel */
     size_t run_count;
-    const int64_t *times_ns; /* irregular channel: time of each sample, shape (samples), rising;
-                                NULL for an even one. Each value holds until the next. */
+    const int64_t *times_ns; /* irregular channel: time of each sample, shape (samples), never
+                                falling; NULL for an even one. Each value holds until the next. */
 };
 
 struct gap {

@@ -36,6 +36,7 @@ enum match {
     WORD,  /* one of the label's words, in any letter case */
     FIRST, /* the label's first word */
     WHOLE, /* the label and nothing else */
+    EXACT, /* the same, in capitals as lead names are written */
 };
 
 /* Asked in order: numerics before the waves whose names they contain. */
@@ -44,87 +45,46 @@ static const struct {
     enum match match;
     enum role role;
 } rules[] = {
-    {"status", WORD, ROLE_STATUS},
-    {"trigger", WORD, ROLE_STATUS},
-    {"sys", WORD, ROLE_TREND},
-    {"dia", WORD, ROLE_TREND},
-    {"mean", WORD, ROLE_TREND},
-    {"systolic", WORD, ROLE_TREND},
-    {"diastolic", WORD, ROLE_TREND},
-    {"hr", WHOLE, ROLE_TREND},
-    {"pr", WHOLE, ROLE_TREND},
-    {"pulse rate", WHOLE, ROLE_TREND},
-    {"heart rate", WHOLE, ROLE_TREND},
-    {"rr", WHOLE, ROLE_TREND},
-    {"nibp", FIRST, ROLE_TREND},
-    {"nbp", FIRST, ROLE_TREND},
-    {"spo2", WHOLE, ROLE_TREND},
-    {"sao2", FIRST, ROLE_TREND},
-    {"etco2", WHOLE, ROLE_TREND},
-    {"ecg", FIRST, ROLE_ECG},
-    {"ekg", FIRST, ROLE_ECG},
-    {"i", WHOLE, ROLE_ECG},
-    {"ii", WHOLE, ROLE_ECG},
-    {"iii", WHOLE, ROLE_ECG},
-    {"avr", WHOLE, ROLE_ECG},
-    {"avl", WHOLE, ROLE_ECG},
-    {"avf", WHOLE, ROLE_ECG},
-    {"mli", WHOLE, ROLE_ECG},
-    {"mlii", WHOLE, ROLE_ECG},
-    {"mliii", WHOLE, ROLE_ECG},
-    {"mcl1", WHOLE, ROLE_ECG},
-    {"v", WHOLE, ROLE_ECG},
-    {"v1", WHOLE, ROLE_ECG},
-    {"v2", WHOLE, ROLE_ECG},
-    {"v3", WHOLE, ROLE_ECG},
-    {"v4", WHOLE, ROLE_ECG},
-    {"v5", WHOLE, ROLE_ECG},
-    {"v6", WHOLE, ROLE_ECG},
-    {"abp", FIRST, ROLE_ABP},
-    {"art", FIRST, ROLE_ABP},
-    {"ibp", FIRST, ROLE_ABP},
-    {"arterial", FIRST, ROLE_ABP},
-    {"pleth", FIRST, ROLE_PLETH},
-    {"ppg", FIRST, ROLE_PLETH},
-    {"spo2", FIRST, ROLE_PLETH},
-    {"co2", FIRST, ROLE_CO2},
-    {"capno", FIRST, ROLE_CO2},
-    {"capnogram", FIRST, ROLE_CO2},
-    {"resp", FIRST, ROLE_RESP},
-    {"respiration", FIRST, ROLE_RESP},
-    {"airway", FIRST, ROLE_RESP},
-    {"awp", FIRST, ROLE_RESP},
-    {"paw", FIRST, ROLE_RESP},
-    {"flow", FIRST, ROLE_RESP},
-    {"eda", FIRST, ROLE_EDA},
-    {"gsr", FIRST, ROLE_EDA},
-    {"scl", FIRST, ROLE_EDA},
-    {"scr", FIRST, ROLE_EDA},
-    {"skin conductance", WHOLE, ROLE_EDA},
-    {"eeg", FIRST, ROLE_EEG},
-    {"fp1", FIRST, ROLE_EEG},
-    {"fp2", FIRST, ROLE_EEG},
-    {"fpz", FIRST, ROLE_EEG},
-    {"f7", FIRST, ROLE_EEG},
-    {"f3", FIRST, ROLE_EEG},
-    {"fz", FIRST, ROLE_EEG},
-    {"f4", FIRST, ROLE_EEG},
-    {"f8", FIRST, ROLE_EEG},
-    {"af7", FIRST, ROLE_EEG},
-    {"af8", FIRST, ROLE_EEG},
-    {"c3", FIRST, ROLE_EEG},
-    {"cz", FIRST, ROLE_EEG},
-    {"c4", FIRST, ROLE_EEG},
-    {"p3", FIRST, ROLE_EEG},
-    {"pz", FIRST, ROLE_EEG},
-    {"p4", FIRST, ROLE_EEG},
-    {"o1", FIRST, ROLE_EEG},
-    {"oz", FIRST, ROLE_EEG},
-    {"o2", FIRST, ROLE_EEG},
-    {"t7", FIRST, ROLE_EEG},
-    {"t8", FIRST, ROLE_EEG},
-    {"emg", FIRST, ROLE_EMG},
-    {"temp", FIRST, ROLE_TEMP},
+    {"status", WORD, ROLE_STATUS},     {"trigger", WORD, ROLE_STATUS},
+    {"sys", WORD, ROLE_TREND},         {"dia", WORD, ROLE_TREND},
+    {"mean", WORD, ROLE_TREND},        {"systolic", WORD, ROLE_TREND},
+    {"diastolic", WORD, ROLE_TREND},   {"hr", WHOLE, ROLE_TREND},
+    {"pr", WHOLE, ROLE_TREND},         {"pulse rate", WHOLE, ROLE_TREND},
+    {"heart rate", WHOLE, ROLE_TREND}, {"rr", WHOLE, ROLE_TREND},
+    {"nibp", FIRST, ROLE_TREND},       {"nbp", FIRST, ROLE_TREND},
+    {"spo2", WHOLE, ROLE_TREND},       {"sao2", FIRST, ROLE_TREND},
+    {"etco2", WHOLE, ROLE_TREND},      {"ecg", FIRST, ROLE_ECG},
+    {"ekg", FIRST, ROLE_ECG},          {"I", EXACT, ROLE_ECG},
+    {"II", EXACT, ROLE_ECG},           {"III", EXACT, ROLE_ECG},
+    {"avr", WHOLE, ROLE_ECG},          {"avl", WHOLE, ROLE_ECG},
+    {"avf", WHOLE, ROLE_ECG},          {"mli", WHOLE, ROLE_ECG},
+    {"mlii", WHOLE, ROLE_ECG},         {"mliii", WHOLE, ROLE_ECG},
+    {"mcl1", WHOLE, ROLE_ECG},         {"V1", EXACT, ROLE_ECG},
+    {"V2", EXACT, ROLE_ECG},           {"V3", EXACT, ROLE_ECG},
+    {"V4", EXACT, ROLE_ECG},           {"V5", EXACT, ROLE_ECG},
+    {"V6", EXACT, ROLE_ECG},           {"abp", FIRST, ROLE_ABP},
+    {"art", FIRST, ROLE_ABP},          {"ibp", FIRST, ROLE_ABP},
+    {"arterial", FIRST, ROLE_ABP},     {"pleth", FIRST, ROLE_PLETH},
+    {"ppg", FIRST, ROLE_PLETH},        {"spo2", FIRST, ROLE_PLETH},
+    {"co2", FIRST, ROLE_CO2},          {"capno", FIRST, ROLE_CO2},
+    {"capnogram", FIRST, ROLE_CO2},    {"resp", FIRST, ROLE_RESP},
+    {"respiration", FIRST, ROLE_RESP}, {"airway", FIRST, ROLE_RESP},
+    {"awp", FIRST, ROLE_RESP},         {"paw", FIRST, ROLE_RESP},
+    {"flow", FIRST, ROLE_RESP},        {"eda", FIRST, ROLE_EDA},
+    {"gsr", FIRST, ROLE_EDA},          {"scl", FIRST, ROLE_EDA},
+    {"scr", FIRST, ROLE_EDA},          {"skin conductance", WHOLE, ROLE_EDA},
+    {"eeg", FIRST, ROLE_EEG},          {"fp1", FIRST, ROLE_EEG},
+    {"fp2", FIRST, ROLE_EEG},          {"fpz", FIRST, ROLE_EEG},
+    {"f7", FIRST, ROLE_EEG},           {"f3", FIRST, ROLE_EEG},
+    {"fz", FIRST, ROLE_EEG},           {"f4", FIRST, ROLE_EEG},
+    {"f8", FIRST, ROLE_EEG},           {"af7", FIRST, ROLE_EEG},
+    {"af8", FIRST, ROLE_EEG},          {"c3", FIRST, ROLE_EEG},
+    {"cz", FIRST, ROLE_EEG},           {"c4", FIRST, ROLE_EEG},
+    {"p3", FIRST, ROLE_EEG},           {"pz", FIRST, ROLE_EEG},
+    {"p4", FIRST, ROLE_EEG},           {"o1", FIRST, ROLE_EEG},
+    {"oz", FIRST, ROLE_EEG},           {"o2", FIRST, ROLE_EEG},
+    {"t7", FIRST, ROLE_EEG},           {"t8", FIRST, ROLE_EEG},
+    {"emg", FIRST, ROLE_EMG},          {"temp", FIRST, ROLE_TEMP},
     {"temperature", FIRST, ROLE_TEMP},
 };
 
@@ -142,6 +102,8 @@ static bool word_at(const char *label, size_t at, const char *word)
 
 static bool matches(const char *label, const char *text, enum match match)
 {
+    if (match == EXACT)
+        return strcmp(label, text) == 0;
     if (match == WHOLE)
         return ascii_equal(label, text);
     if (match == FIRST)
@@ -155,7 +117,8 @@ static bool matches(const char *label, const char *text, enum match match)
 
 enum role role_of_label(const char *label, const char *unit, char *why, size_t why_size)
 {
-    static const char *const how[] = {"label has the word", "label begins with", "label is"};
+    static const char *const how[] = {"label has the word", "label begins with", "label is",
+                                      "label is lead"};
     for (size_t i = 0; i < sizeof rules / sizeof *rules; i++) {
         if (!matches(label, rules[i].text, rules[i].match))
             continue;
