@@ -52,9 +52,11 @@ const struct derivation derivation_beats = {
         "Pan & Tompkins 1985, IEEE Trans Biomed Eng 32:230, with the medians and the detection "
         "coefficient of Hamilton & Tompkins 1986, IEEE Trans Biomed Eng 33:1157; departures "
         "are named in the sources (ecg_lead.c, ecg_fuse.c, qrs.c)",
-    .edges = "No beat is reported where every lead is missing for more than 20 ms; the first one "
-             "after such a stretch is flagged, since the interval before it is none. The whole "
-             "recording is searched whatever part is asked for, so that a part never differs.",
+    .edges =
+        "No beat is reported where every lead is missing for more than 20 ms; the first one "
+        "after such a stretch is flagged, since the interval before it is none. Beats amid noise "
+        "(cautery), and weak ones taken at a second look, are flagged as doubtful. The whole "
+        "recording is searched whatever part is asked for, so that a part never differs.",
     .version = "1",
     .compute = compute_beats,
 };

@@ -69,9 +69,10 @@ static int add_beat(struct search *search, const struct qrs_peak *peak, struct e
     int failed = r_peak_find(&search->finders[peak->lead], about_ns, &at_ns, &height, &found, err);
     if (failed || !found)
         return failed;
-    uint8_t flags = search->after_gap ? TRAIN_GAP : TRAIN_NORMAL;
+    unsigned flags = search->after_gap ? TRAIN_GAP : TRAIN_NORMAL;
+    flags |= peak->doubtful ? TRAIN_DOUBTFUL : TRAIN_NORMAL;
     search->after_gap = false;
-    return train_add(search->out, at_ns, height, flags, err);
+    return train_add(search->out, at_ns, height, (uint8_t)flags, err);
 }
 
 static int take_event(struct search *search, const struct fuse_event *event, struct err *err)

@@ -1,6 +1,10 @@
 /*
  * ecg_fuse.c - weighting leads and finding the peaks of their sum. Whether a peak is a QRS is
  * decided elsewhere (qrs.c).
+ *
+ * Own choice: no published rule is followed. On 12 MIT-BIH records, both leads, it gives 38 missed
+ * and 59 false beats of 22285; equal weights give 29 and 154, the first lead alone 50 and 73, the
+ * second alone 772 and 587.
  */
 #include "physiology/ecg_fuse.h"
 
@@ -10,9 +14,12 @@
 
 #include "base/array.h"
 
-#define NOISE_RATIO  2.0 /* height over floor of a lead that shows nothing but noise */
-#define STICK        2.0 /* how much better another lead must be before R peaks move to it */
-#define LEAST_WEIGHT 1e-3
+#define NOISE_CLARITY 2.0  /* of a lead that shows nothing but noise */
+#define MOST_CLARITY  20.0 /* more makes no lead better */
+#define UNCLEAR       4.5  /* clarity below which a beat is doubtful */
+#define CREST         0.2  /* of the logarithm of what stands above a usual QRS */
+#define STICK         2.0  /* how much better another lead must be before R peaks move to it */
+#define LEAST_WEIGHT  1e-3
 
 int ecg_fuse_init(struct ecg_fuse *fuse, struct ecg_lead *leads, size_t lead_count, struct err *err)
 {
@@ -50,16 +57,27 @@ void ecg_fuse_fini(struct ecg_fuse *fuse)
     fuse->feature = fuse->slope = NULL;
 }
 
-/* A lead's weight grows with the square of how far its QRS stand above what lies between them. */
+static double clarity_of(double height, double floor)
+{
+    return height > 0 ? fmin(height / fmax(floor, height / MOST_CLARITY), MOST_CLARITY) : 1;
+}
+
+/* A lead's weight grows with the square of its clarity above that of noise: of the lesser of what
+ * it is around and in this very bin, so that a burst in one lead is left to the others. */
 static void weigh_leads(struct ecg_fuse *fuse)
 {
+    fuse->clarity = fuse->clarity_here = 1;
     for (size_t l = 0; l < fuse->lead_count; l++) {
+        const struct ecg_lead *lead = &fuse->leads[l];
         double height, floor;
-        ecg_lead_levels(&fuse->leads[l], &height, &floor);
-        bool flat = isnan(height) || height <= 0;
-        double above = flat ? 0 : fmin(height / fmax(floor, height / 100), 20) - NOISE_RATIO;
-        fuse->scales[l] = flat ? 0 : 1 / height;
-        fuse->weights[l] = flat ? 0 : fmax(above * fabs(above), LEAST_WEIGHT);
+        ecg_lead_levels(lead, &height, &floor);
+        double clarity = clarity_of(height, floor);
+        double here = clarity_of((double)lead->height[ECG_AHEAD], (double)lead->floor[ECG_AHEAD]);
+        double above = fmin(here, clarity) - NOISE_CLARITY;
+        fuse->clarity = fmax(fuse->clarity, clarity);
+        fuse->clarity_here = fmax(fuse->clarity_here, here);
+        fuse->scales[l] = height > 0 ? 1 / height : 0;
+        fuse->weights[l] = height > 0 ? fmax(above * fabs(above), LEAST_WEIGHT) : 0;
         if (fuse->weights[l] > STICK * fuse->weights[fuse->best_lead])
             fuse->best_lead = l;
     }
@@ -69,6 +87,13 @@ static void shift(struct ecg_fuse *fuse)
 {
     memmove(fuse->feature, fuse->feature + ECG_BIN, ECG_BIN * sizeof(float));
     memmove(fuse->slope, fuse->slope + ECG_BIN, ECG_BIN * sizeof(float));
+}
+
+/* A feature in units of a usual QRS, what stands above one compressed: a burst in one lead does not
+ * drown the others. */
+static double compressed(double feature)
+{
+    return feature > 1 ? 1 + CREST * log(feature) : feature;
 }
 
 /* The weighted mean over those leads that are there at a tick; NaN when none is. */
@@ -81,7 +106,7 @@ static void sum_leads(struct ecg_fuse *fuse)
             double f = (double)lead->feature[ECG_BIN + i], s = (double)lead->slope[ECG_BIN + i];
             if (isnan(f))
                 continue;
-            feature += fuse->weights[l] * fuse->scales[l] * f;
+            feature += fuse->weights[l] * compressed(fuse->scales[l] * f);
             slope += fuse->weights[l] * fuse->scales[l] * s;
             weight += fuse->weights[l];
             if (fuse->weights[l] == 0)
@@ -120,6 +145,8 @@ static void add_event(struct ecg_fuse *fuse, enum fuse_kind kind, int64_t tick, 
         .peak = {.tick = tick,
                  .height = (double)fuse->feature[at],
                  .slope = steepest(fuse->slope + at),
+                 .clarity = fuse->clarity,
+                 .doubtful = fmin(fuse->clarity, fuse->clarity_here) < UNCLEAR,
                  .lead = fuse->best_lead},
     };
 }

@@ -28,10 +28,13 @@ struct ecg_fuse {
     struct ecg_lead *leads; /* shape (lead_count) */
     size_t lead_count;
     double *weights, *scales; /* shape (lead_count): of the bin in place */
-    size_t best_lead;         /* the R peak is looked for here */
-    int64_t bin;              /* number of the bin in place; -1 before the first */
-    float *feature, *slope;   /* shape (FUSE_SPAN): the bin before and the bin in place */
-    bool inside;              /* in a stretch that can be searched */
+    /* How many times higher QRS stand than what lies between them, in the clearest lead: around
+     * the bin in place, and in it alone. */
+    double clarity, clarity_here;
+    size_t best_lead;       /* the R peak is looked for here */
+    int64_t bin;            /* number of the bin in place; -1 before the first */
+    float *feature, *slope; /* shape (FUSE_SPAN): the bin before and the bin in place */
+    bool inside;            /* in a stretch that can be searched */
     struct fuse_event events[FUSE_EVENTS]; /* by the last call, in time order */
     size_t event_count;
 };

@@ -3,9 +3,10 @@
  * Decides nothing about beats.
  *
  * The chain is that of Pan & Tompkins 1985 with these departures, made so that one detector serves
- * any rate from 100 Hz up: the band is cut by Butterworth filters at the lead's own rate, and the
- * grid of 200 Hz, their rate, is read off the filtered signal; the slope is made absolute instead
- * of squared, as Hamilton & Tompkins 1986 reason for unequal beats; the moving mean spans 100 ms.
+ * any rate from 100 Hz up: the band (7 to 25 Hz; theirs is 5 to 11) is cut by Butterworth filters
+ * at the lead's own rate, and the grid of 200 Hz, which is their rate, is read off the filtered
+ * signal; the slope is made absolute, not squared, so that ectopic beats and normal ones stay
+ * comparable; the moving mean spans 120 ms instead of 150.
  */
 #include "physiology/ecg_lead.h"
 
@@ -16,7 +17,7 @@
 #include "base/array.h"
 #include "dsp/stats.h"
 
-#define LOW_HZ    5.0
+#define LOW_HZ    7.0
 #define HIGH_HZ   25.0
 #define BRIDGE_NS (20 * NS_PER_MS) /* a QRS does not fit into this */
 

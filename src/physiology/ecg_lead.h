@@ -29,8 +29,8 @@ enum {
     ECG_BIN = 400, /* ticks */
     ECG_AHEAD = 4, /* bins looked ahead, and back */
     ECG_SPAN = ECG_BIN * (ECG_AHEAD + 2),
-    ECG_WINDOW = 20, /* ticks of the moving mean: 100 ms */
-    ECG_LAG = 13,    /* ticks from the middle of a QRS to the peak of its feature */
+    ECG_WINDOW = 24, /* ticks of the moving mean: 120 ms */
+    ECG_LAG = 15,    /* ticks from the middle of a QRS to the peak of its feature */
     ECG_BLOCK = 4096,
     ECG_BLOCK_MAX = 65536,
     ECG_LEAST_RATE_HZ = 90,

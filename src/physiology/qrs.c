@@ -1,6 +1,15 @@
 /*
- * qrs.c - the decision rules of Pan & Tompkins 1985 with the medians of Hamilton & Tompkins 1986:
- * adaptive threshold, refractory time, T wave, search back.
+ * qrs.c - the decision rules of Pan & Tompkins 1985 (PT) with the medians and the coefficient of
+ * Hamilton & Tompkins 1986 (HT): adaptive threshold, refractory time, T wave, search back.
+ *
+ * Departures, with what they were worth on 12 MIT-BIH records by EC57 (22285 beats, both leads),
+ * where 38 beats are missed and 59 false, and on 80 s of record 118 in noise:
+ *   - the threshold is raised early after a QRS, in the manner of Christov 2004 (Biomed Eng Online
+ *     3:28), the more the less clear the leads are; and a peak is dropped afterwards when the
+ *     rhythm is steady, goes on without it, and it stands out too little for that clarity. Without
+ *     both: 32 missed, 78 false; in noise at 12 dB 8 false instead of none, at 6 dB 44, not 21
+ *   - in an irregular rhythm the search back waits for 1.3 times the upper quartile of the last
+ *     intervals. Without: 8 more false beats
  */
 #include "physiology/qrs.h"
 
@@ -10,15 +19,17 @@
 #include "dsp/stats.h"
 
 #define DETECTION      0.3125 /* HT: of the way from the noise to the QRS level */
-#define EARLY          0.1    /* added to it right after a QRS, nothing left after one interval */
+#define EARLY          2.0    /* over clarity: added to it right after a QRS; 0 an interval later */
 #define SECOND_LOOK    0.5    /* PT: of the threshold, when searching back */
 #define LATE           1.66   /* PT: of the usual interval, before searching back */
+#define LONGER         1.3    /* of the upper quartile of intervals, before searching back */
 #define T_WAVE_SLOPE   0.5    /* PT: of the slope of the QRS before */
-#define REGULAR        0.15 /* spread of the last intervals, of their median, in a steady rhythm */
-#define EXTRA_RHYTHM   0.15 /* how near the usual interval comes without an extra peak */
-#define EXTRA_HEIGHT   0.9  /* an extra peak is lower than this share of its neighbours */
-#define FIRST_NOISE    0.1
-#define USUAL_INTERVAL 200.0 /* ticks, until intervals are known: 60 beats a minute */
+#define STEADY         0.15   /* spread of the last intervals over their median */
+#define EXTRA_RHYTHM   0.15 /* how near to the usual interval the rhythm is without an extra peak */
+#define EXTRA_HEIGHT   0.5  /* how high an extra peak is at most, of its neighbours, */
+#define EXTRA_UNCLEAR  5.0  /* and this much over clarity more */
+#define FIRST_NOISE    0.1  /* levels until they are learnt, of a usual QRS */
+#define USUAL_INTERVAL 200.0 /* ticks: 60 beats a minute */
 
 enum {
     T_WAVE_END = 72,  /* ticks after a QRS: 360 ms, PT */
@@ -43,13 +54,13 @@ static double median_of(const double *memory)
 }
 
 /* How high a peak at `tick` must be: the sooner after the last QRS, the higher. */
-static double threshold(const struct qrs_detector *detector, int64_t tick)
+static double threshold(const struct qrs_detector *detector, int64_t tick, double clarity)
 {
     double beat = median_of(detector->beats), noise = median_of(detector->noises);
     double share = DETECTION;
     if (detector->has_last) {
         double passed = (double)(tick - detector->last.tick) / median_of(detector->intervals);
-        share += EARLY * fmax(0, 1 - passed);
+        share += EARLY / clarity * fmax(0, 1 - passed);
     }
     return noise + share * (beat - noise);
 }
@@ -61,29 +72,29 @@ static bool is_t_wave(const struct qrs_detector *detector, const struct qrs_peak
 }
 
 /* Half of the last intervals lie within a narrow band. */
-static bool is_regular(const struct qrs_detector *detector)
+static bool is_steady(const struct qrs_detector *detector)
 {
     double scratch[QRS_MEMORY];
     memcpy(scratch, detector->intervals, sizeof scratch);
     double high = quantile(scratch, QRS_MEMORY, 0.75);
     double low = quantile(scratch, QRS_MEMORY, 0.25);
-    return high - low < REGULAR * median(scratch, QRS_MEMORY);
+    return high - low < STEADY * median(scratch, QRS_MEMORY);
 }
 
 /* One peak too many: without it the rhythm is as usual, and it is lower than its neighbours. */
 static bool last_is_extra(const struct qrs_detector *detector, const struct qrs_peak *next)
 {
-    if (!detector->has_sure || !is_regular(detector))
+    if (!detector->has_sure || !is_steady(detector))
         return false;
     double usual = median_of(detector->intervals);
     double whole = (double)(next->tick - detector->sure.tick);
     double lower = fmin(detector->sure.height, next->height);
     return fabs(whole - usual) < EXTRA_RHYTHM * usual &&
-           detector->last.height < EXTRA_HEIGHT * lower;
+           detector->last.height < (EXTRA_HEIGHT + EXTRA_UNCLEAR / detector->last.clarity) * lower;
 }
 
 /* `peak` is a QRS, which settles what the one before it was. */
-static void accept(struct qrs_detector *detector, const struct qrs_peak *peak)
+static void accept(struct qrs_detector *detector, const struct qrs_peak *peak, bool second_look)
 {
     if (detector->has_last && last_is_extra(detector, peak)) {
         detector->beat_count--;
@@ -99,6 +110,7 @@ static void accept(struct qrs_detector *detector, const struct qrs_peak *peak)
             (double)(peak->tick - detector->last.tick);
     detector->beats[detector->beat_count++ % QRS_MEMORY] = peak->height;
     detector->last = *peak;
+    detector->last.doubtful |= second_look;
     detector->has_last = true;
 }
 
@@ -121,7 +133,7 @@ static void wait_for_second_look(struct qrs_detector *detector, const struct qrs
 /* The highest waiting peak worth a second look; waiting_count when there is none. */
 static size_t best_waiting(const struct qrs_detector *detector, int64_t before)
 {
-    double least = SECOND_LOOK * threshold(detector, INT64_MAX / 2);
+    double least = SECOND_LOOK * threshold(detector, INT64_MAX / 2, 1);
     size_t best = detector->waiting_count;
     for (size_t i = 0; i < detector->waiting_count; i++) {
         const struct qrs_peak *peak = &detector->waiting[i];
@@ -134,16 +146,24 @@ static size_t best_waiting(const struct qrs_detector *detector, int64_t before)
     return best;
 }
 
+/* How long after a QRS the next one is late, in ticks. */
+static double patience(const struct qrs_detector *detector)
+{
+    double scratch[QRS_MEMORY];
+    memcpy(scratch, detector->intervals, sizeof scratch);
+    double long_ones = quantile(scratch, QRS_MEMORY, 0.75);
+    return fmax(LATE * median(scratch, QRS_MEMORY), LONGER * long_ones);
+}
+
 static void search_back(struct qrs_detector *detector, int64_t before)
 {
-    while (detector->has_last &&
-           (double)(before - detector->last.tick) > LATE * median_of(detector->intervals)) {
+    while (detector->has_last && (double)(before - detector->last.tick) > patience(detector)) {
         size_t best = best_waiting(detector, before);
         if (best == detector->waiting_count)
             return;
         struct qrs_peak peak = detector->waiting[best];
         drop_waiting(detector, best);
-        accept(detector, &peak);
+        accept(detector, &peak, true);
     }
 }
 
@@ -151,8 +171,9 @@ void qrs_push(struct qrs_detector *detector, const struct qrs_peak *peak)
 {
     detector->found_count = 0;
     search_back(detector, peak->tick);
-    if (peak->height > threshold(detector, peak->tick) && !is_t_wave(detector, peak)) {
-        accept(detector, peak);
+    if (peak->height > threshold(detector, peak->tick, peak->clarity) &&
+        !is_t_wave(detector, peak)) {
+        accept(detector, peak, false);
         detector->waiting_count = 0;
     } else {
         wait_for_second_look(detector, peak);

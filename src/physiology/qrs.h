@@ -22,8 +22,9 @@ struct qrs_peak {
     int64_t tick;
     double height;  /* of the detection function */
     double slope;   /* steepest in it: tells a QRS from a T wave */
+    double clarity; /* how many times higher QRS stand here than what lies between them */
     size_t lead;    /* caller's: where to look for the R peak */
-    double quality; /* caller's */
+    bool doubtful;  /* amid noise; the detector adds: taken at a second look */
 };
 
 struct qrs_detector {

@@ -293,6 +293,41 @@ Test(beats, leads_stand_in_for_each_other)
     free(ecg);
 }
 
+/* Cautery for 6 s, twice as high as R: what is found in it is called doubtful, and nothing outside
+ * suffers. A second lead that the cautery spares finds them all. */
+Test(beats, a_burst_of_noise_is_doubtful_and_soon_over)
+{
+    struct ecg *ecg = ecg_new(500, 90, 0.8);
+    float *first = lead_new(ecg, 1, 0.1, 0.01), *second = lead_new(ecg, 0.4, 0.1, 0.01);
+    uint32_t seed = 11;
+    for (int64_t i = 40 * 500; i < 46 * 500; i++)
+        first[i] += (float)(2 * noise_unit(&seed));
+    struct trace *traces[] = {trace_of(ecg, first, 0), trace_of(ecg, second, 0)};
+    struct train alone = beats_of((const struct trace *const *)traces, 1, 4096);
+    struct train both = beats_of((const struct trace *const *)traces, 2, 4096);
+    struct score before = score(ecg, &alone, 0, 39.5), after = score(ecg, &alone, 46.5, 90);
+    cr_expect_eq(before.missed + before.extra + after.missed + after.extra, 0);
+    size_t inside = 0, doubtful = 0, wrongly = 0;
+    for (size_t i = 0; i < alone.count; i++) {
+        double at_s = s_from_ns(alone.events[i].time_ns);
+        bool flag = alone.events[i].flags & TRAIN_DOUBTFUL;
+        bool in_burst = at_s > 40 && at_s < 46;
+        inside += in_burst;
+        doubtful += in_burst && flag;
+        wrongly += flag && (at_s < 38 || at_s > 48);
+    }
+    cr_expect_geq(10 * doubtful, 8 * inside, "%zu of %zu", doubtful, inside);
+    cr_expect_eq(wrongly, 0);
+    struct score fused = score(ecg, &both, 0, 90);
+    cr_expect(fused.missed == 0 && fused.extra == 0, "missed %zu, extra %zu", fused.missed,
+              fused.extra);
+    train_free(&alone);
+    train_free(&both);
+    trace_free(traces[0]);
+    trace_free(traces[1]);
+    free(ecg);
+}
+
 /* The R wave shrinks to a fifth within 10 s and comes back. */
 Test(beats, a_change_of_amplitude_is_followed)
 {
