@@ -1,0 +1,250 @@
+/*
+ * draw_lanes.c - the traces: gutter with name, unit, scale and the value under the cursor, and the
+ * curve beside it; then the lines of marks and cursors over all of them.
+ */
+#include <math.h>
+#include <stdio.h>
+#include <string.h>
+
+#include "terminal/review_impl.h"
+
+enum { DOT_ROWS_PER_CELL = 4 };
+
+/* ---- the gutter ---- */
+
+/* A number as precise as a range of `span` deserves: "1.25" in 2 mV, "118" in 200 mm[Hg]. */
+static void number_text(double value, double span, int more, char out[VALUE_TEXT_SIZE])
+{
+    int digits = span > 0 ? 2 - (int)floor(log10(span)) + more : 2;
+    digits = digits < 0 ? 0 : digits > 6 ? 6 : digits;
+    if (isnan(value))
+        (void)snprintf(out, VALUE_TEXT_SIZE, "--");
+    else if (fabs(value) >= 1e7)
+        (void)snprintf(out, VALUE_TEXT_SIZE, "%.2e", value);
+    else
+        (void)snprintf(out, VALUE_TEXT_SIZE, "%.*f", digits, value == 0 ? 0.0 : value);
+}
+
+static int put_right(struct canvas *canvas, int row, int end, enum ink ink, const char *text)
+{
+    int column = end - (int)strlen(text);
+    (void)canvas_text(canvas, row, column, end, ink, text);
+    return column;
+}
+
+struct reading {
+    float value, second; /* NaN: none there */
+    int64_t age_ns;
+};
+
+static struct reading read_cursors(const struct review *review, const struct trace *trace)
+{
+    struct reading reading = {NAN, NAN, 0};
+    int64_t age;
+    if (trace_value_at(trace, review->cursor_ns, &reading.value, &reading.age_ns, NULL))
+        reading.value = NAN;
+    if (review->second_ns != NS_NONE &&
+        trace_value_at(trace, review->second_ns, &reading.second, &age, NULL))
+        reading.second = NAN;
+    return reading;
+}
+
+static void age_text(int64_t age_ns, char out[VALUE_TEXT_SIZE])
+{
+    int64_t seconds = age_ns / NS_PER_S;
+    if (seconds < 120)
+        (void)snprintf(out, VALUE_TEXT_SIZE, "%d s old", (int)seconds);
+    else
+        (void)snprintf(out, VALUE_TEXT_SIZE, "%lld min old", (long long)(seconds / 60));
+}
+
+/* The value under the cursor, its unit, its age, and how it differs from the second cursor's. */
+static void draw_value(const struct review *review, struct canvas *canvas, const struct lane *lane,
+                       int row, int end, double span, bool tall)
+{
+    struct reading reading = read_cursors(review, lane->trace);
+    char text[VALUE_TEXT_SIZE];
+    number_text((double)reading.value, span, 1, text);
+    int at = canvas_text(canvas, row, 2, end, INK_STRONG, text);
+    at = canvas_text(canvas, row, at + 1, end, INK_DIM, lane->trace->unit);
+    int next_row = tall ? row + 1 : row, next = tall ? 2 : at + 1;
+    if (review->second_ns != NS_NONE) {
+        number_text((double)(reading.value - reading.second), span, 1, text);
+        (void)canvas_printf(canvas, next_row, next, end, INK_CURSOR_2, "\u0394%s", text);
+    } else if (lane->trace->times_ns && !isnan(reading.value)) {
+        age_text(reading.age_ns, text);
+        (void)canvas_text(canvas, next_row, next, end, INK_DIM, text);
+    }
+}
+
+static void draw_scale(const struct lane *lane, struct canvas *canvas, int row, int rows, int end,
+                       double low, double high)
+{
+    char text[VALUE_TEXT_SIZE + FILTER_TEXT_SIZE];
+    if (rows < 2)
+        return;
+    number_text(low, high - low, 0, text);
+    int limit = put_right(canvas, row + rows - 1, end, INK_DIM, text) - 1;
+    if (rows < 4)
+        return;
+    char filter[FILTER_TEXT_SIZE];
+    display_filter_text(&lane->filter, filter);
+    if (lane->answer.pending)
+        (void)canvas_text(canvas, row + rows - 1, 2, limit, INK_WARN, "computing");
+    else if (*filter)
+        (void)canvas_text(canvas, row + rows - 1, 2, limit, INK_DIM, filter);
+    else if (lane->fixed)
+        (void)canvas_printf(canvas, row + rows - 1, 2, limit, INK_DIM, "%g/div",
+                            lane->per_division);
+}
+
+static void draw_gutter(const struct review *review, struct canvas *canvas, const struct lane *lane,
+                        int row, int rows, double low, double high)
+{
+    int end = review->layout.gutter - 1, limit = end;
+    bool focused = lane == &review->lanes[review->focus];
+    char text[VALUE_TEXT_SIZE];
+    if (end < 4)
+        return;
+    if (rows >= 2) {
+        number_text(high, high - low, 0, text);
+        limit = put_right(canvas, row, end, INK_DIM, text) - 1;
+    }
+    if (focused)
+        canvas_put(canvas, row, 0, 0x25b8, INK_STRONG);
+    (void)canvas_text(canvas, row, 1, rows >= 2 ? limit : end / 2, focused ? INK_STRONG : INK_TEXT,
+                      lane->trace->name);
+    draw_scale(lane, canvas, row, rows, end, low, high);
+    if (rows == 1)
+        draw_value(review, canvas, lane, row, end, high - low, false);
+    else
+        draw_value(review, canvas, lane, row + 1, rows == 2 ? limit : end, high - low, rows >= 3);
+}
+
+/* ---- the curve ---- */
+
+/* Braille dots of a cell by row from the top, left and right (Unicode 8-dot patterns). */
+static const uint8_t dot_bits[DOTS_PER_CELL][DOT_ROWS_PER_CELL] = {{0x01, 0x02, 0x04, 0x40},
+                                                                   {0x08, 0x10, 0x20, 0x80}};
+
+struct scale {
+    double high, dots_per_unit;
+    int dot_rows;
+};
+
+static int dot_row(const struct scale *scale, float value)
+{
+    double row = floor((scale->high - (double)value) * scale->dots_per_unit);
+    return row < 0 ? 0 : row >= scale->dot_rows ? scale->dot_rows - 1 : (int)row;
+}
+
+/* One column of cells: the bits of both its columns of dots. */
+static void draw_cell_column(struct canvas *canvas, const struct column *columns,
+                             const struct scale *scale, int row, int column, enum ink ink)
+{
+    for (int side = 0; side < DOTS_PER_CELL; side++) {
+        if (columns[side].kind != COLUMN_DATA)
+            continue;
+        int top = dot_row(scale, columns[side].high), bottom = dot_row(scale, columns[side].low);
+        for (int dot = top; dot <= bottom; dot++) {
+            int at = row + dot / DOT_ROWS_PER_CELL;
+            struct cell *cell = &canvas->cells[at * canvas->columns + column];
+            uint32_t before = cell->glyph ? cell->glyph : 0x2800;
+            cell->glyph = before | dot_bits[side][dot % DOT_ROWS_PER_CELL];
+            cell->ink = (uint8_t)ink;
+        }
+    }
+}
+
+static void draw_curve(const struct review *review, struct canvas *canvas, const struct lane *lane,
+                       int row, int rows, double low, double high, enum ink ink)
+{
+    int left = review->layout.gutter;
+    struct scale scale = {high, rows * DOT_ROWS_PER_CELL / (high - low), rows * DOT_ROWS_PER_CELL};
+    bool any = false;
+    for (int cell = 0; cell < review->view.cells; cell++) {
+        const struct column *columns = &lane->columns[cell * DOTS_PER_CELL];
+        if (columns[0].kind == COLUMN_PENDING || columns[1].kind == COLUMN_PENDING)
+            canvas_put(canvas, row + rows / 2, left + cell, 0x2591, INK_DIM);
+        else
+            draw_cell_column(canvas, columns, &scale, row, left + cell, ink);
+        any = any || columns[0].kind != COLUMN_NOTHING || columns[1].kind != COLUMN_NOTHING;
+    }
+    int end = left + review->view.cells;
+    if (!any)
+        (void)canvas_text(canvas, row + rows / 2, left + 2, end, INK_DIM, "nothing recorded here");
+    if (lane->answer.unfiltered)
+        (void)canvas_text(canvas, row, left + 2, end, INK_WARN, " filter off at this zoom ");
+}
+
+/* ---- lines over all traces ---- */
+
+static void draw_upright(struct review *review, struct canvas *canvas, int64_t at_ns,
+                         uint32_t glyph, enum ink ink, bool over)
+{
+    const struct part *part = &review->layout.lanes;
+    int64_t cell = view_cell_at(&review->view, at_ns);
+    if (cell < 0 || cell >= review->view.cells)
+        return;
+    int column = review->layout.gutter + (int)cell;
+    for (int row = part->row; row < part->row + part->rows; row++) {
+        struct cell *there = &canvas->cells[row * canvas->columns + column];
+        if (there->glyph == 0) {
+            canvas_put(canvas, row, column, glyph, ink);
+        } else if (over) {
+            there->ink = (uint8_t)ink;
+            there->reverse = 1;
+        }
+    }
+}
+
+static void draw_mark_lines(struct review *review, struct canvas *canvas)
+{
+    const struct view *view = &review->view;
+    int visible = 0;
+    for (size_t i = 0; i < review->mark_count; i++)
+        visible += review->marks[i].onset_ns >= view->from_ns &&
+                   review->marks[i].onset_ns < view->from_ns + view->span_ns;
+    for (size_t i = 0; i < review->mark_count; i++) {
+        const struct mark *mark = &review->marks[i];
+        bool chosen = mark->id == review->chosen_id;
+        /* Many marks would be a fence in front of the traces. */
+        if (chosen || (visible <= view->cells / 6 && mark->state != MARK_REJECTED))
+            draw_upright(review, canvas, mark->onset_ns, 0x250a, chosen ? INK_MARK : INK_DIM,
+                         false);
+    }
+}
+
+static void draw_lane(struct review *review, struct canvas *canvas, size_t nth, int row)
+{
+    static const enum ink inks[] = {INK_TRACE_A, INK_TRACE_B, INK_TRACE_C, INK_TRACE_D};
+    size_t index = lane_shown_at(review, review->first_lane + nth);
+    struct lane *lane = &review->lanes[index];
+    int rows = lane_height(review, nth);
+    double low, high;
+    lane_refresh(review, lane);
+    review->waits = review->waits || lane->answer.pending;
+    lane_range(lane, &low, &high);
+    draw_curve(review, canvas, lane, row, rows, low, high, inks[index % 4]);
+    draw_gutter(review, canvas, lane, row, rows, low, high);
+}
+
+void draw_lanes(struct review *review, struct canvas *canvas)
+{
+    const struct part *part = &review->layout.lanes;
+    int row = part->row;
+    review->waits = false;
+    for (size_t nth = 0; nth < lanes_on_screen(review); nth++) {
+        draw_lane(review, canvas, nth, row);
+        row += lane_height(review, nth);
+    }
+    if (lanes_shown(review) == 0 && part->rows > 0)
+        (void)canvas_text(canvas, part->row + part->rows / 2, review->layout.gutter + 2,
+                          part->columns, INK_DIM,
+                          review->lane_count > 0 ? "all traces are hidden: \\ shows them"
+                                                 : "no recording attached yet");
+    draw_mark_lines(review, canvas);
+    if (review->second_ns != NS_NONE)
+        draw_upright(review, canvas, review->second_ns, 0x2506, INK_CURSOR_2, true);
+    draw_upright(review, canvas, review->cursor_ns, 0x2502, INK_CURSOR, true);
+}

@@ -1,0 +1,229 @@
+/*
+ * review_lanes.c - how the traces are shown: which, in what order, how tall, gain, filters.
+ */
+#include <math.h>
+#include <string.h>
+
+#include "terminal/review_impl.h"
+
+enum { LANE_ROWS_MOST = 24 };
+
+static bool same_filter(const struct display_filter *a, const struct display_filter *b)
+{
+    return a->high_pass == b->high_pass && a->low_pass == b->low_pass && a->notch == b->notch;
+}
+
+static bool same_view(const struct view *a, const struct view *b)
+{
+    return a->from_ns == b->from_ns && a->span_ns == b->span_ns && a->cells == b->cells;
+}
+
+void lane_refresh(struct review *review, struct lane *lane)
+{
+    if (lane->drawn && same_view(&lane->drawn_view, &review->view) &&
+        same_filter(&lane->drawn_filter, &lane->filter))
+        return;
+    lane->answer = columns_fill(review->casefile, lane->trace, &lane->filter, &review->view,
+                                &review->room, lane->columns);
+    lane->ranged = columns_range(lane->columns, view_dots(&review->view), &review->room, &lane->low,
+                                 &lane->high);
+    lane->drawn = !lane->answer.pending;
+    lane->drawn_view = review->view;
+    lane->drawn_filter = lane->filter;
+}
+
+/* 1, 2 or 5 times a power of ten: the smallest that is not below `least`. */
+static double round_step(double least)
+{
+    double power = pow(10, floor(log10(least)));
+    double part = least / power;
+    return power * (part <= 1.0000001 ? 1 : part <= 2.0000001 ? 2 : part <= 5.0000001 ? 5 : 10);
+}
+
+/* The robust range, widened to round numbers so that the scale is readable and stands still while
+ * the trace scrolls by. */
+static void automatic_range(const struct lane *lane, double *low, double *high)
+{
+    double from = lane->ranged ? lane->low : 0, to = lane->ranged ? lane->high : 0;
+    double span = to - from;
+    double least = fmax(fabs(from), fabs(to)) * 1e-6;
+    if (!(span > least)) {
+        double half = least > 0 ? fmax(fabs(from) * 0.01, least) : 1;
+        *low = from - half;
+        *high = from + half;
+        return;
+    }
+    double step = round_step(span / 8);
+    *low = floor((from - 0.05 * span) / step) * step;
+    *high = ceil((to + 0.05 * span) / step) * step;
+}
+
+void lane_range(const struct lane *lane, double *low, double *high)
+{
+    if (!lane->fixed) {
+        automatic_range(lane, low, high);
+        return;
+    }
+    *low = lane->centre - lane->per_division * LANE_DIVISIONS / 2;
+    *high = lane->centre + lane->per_division * LANE_DIVISIONS / 2;
+}
+
+/* Fixes the gain where the automatic one is, rounded, then changes it by one step. */
+static void change_gain(struct lane *lane, bool larger)
+{
+    if (!lane->fixed) {
+        double low, high;
+        lane_range(lane, &low, &high);
+        lane->per_division = round_step((high - low) / LANE_DIVISIONS);
+        lane->centre = round((low + high) / 2 / lane->per_division) * lane->per_division;
+        lane->fixed = true;
+    }
+    lane->per_division =
+        larger ? round_step(lane->per_division / 2.6) : round_step(lane->per_division * 1.01);
+}
+
+/* Number of the focused lane among those shown. */
+static size_t focus_number(const struct review *review)
+{
+    size_t number = 0;
+    for (size_t i = 0; i < review->focus; i++)
+        number += !review->lanes[i].hidden;
+    return number;
+}
+
+static void scroll_to_focus(struct review *review)
+{
+    size_t number = focus_number(review), room = lanes_on_screen(review);
+    if (room == 0 || number < review->first_lane)
+        review->first_lane = number;
+    else if (number >= review->first_lane + room)
+        review->first_lane = number - room + 1;
+    size_t shown = lanes_shown(review);
+    if (review->first_lane + room > shown)
+        review->first_lane = shown - room;
+}
+
+static void move_focus(struct review *review, bool down)
+{
+    size_t number = focus_number(review);
+    if (down ? number + 1 < lanes_shown(review) : number > 0)
+        review->focus = lane_shown_at(review, down ? number + 1 : number - 1);
+}
+
+static void move_lane(struct review *review, bool down)
+{
+    size_t from = review->focus;
+    move_focus(review, down);
+    struct lane moved = review->lanes[from];
+    review->lanes[from] = review->lanes[review->focus];
+    review->lanes[review->focus] = moved;
+}
+
+static void hide_lane(struct review *review)
+{
+    struct lane *lane = &review->lanes[review->focus];
+    size_t number = focus_number(review);
+    lane->hidden = true;
+    size_t shown = lanes_shown(review);
+    if (number >= shown && number > 0)
+        number--;
+    review->focus = lane_shown_at(review, number);
+    review_say(review, INK_DIM, "%s hidden; \\ shows all hidden traces", lane->trace->name);
+}
+
+static void show_lanes(struct review *review)
+{
+    for (size_t i = 0; i < review->lane_count; i++)
+        review->lanes[i].hidden = false;
+    if (review->focus >= review->lane_count)
+        review->focus = lane_shown_at(review, 0);
+}
+
+static void change_height(struct review *review, int by)
+{
+    int now = review->lane_rows > 0 ? review->lane_rows : lane_height(review, 0);
+    int wanted = now + by;
+    review->lane_rows = wanted < 1 ? 1 : wanted > LANE_ROWS_MOST ? LANE_ROWS_MOST : wanted;
+}
+
+static void say_filter(struct review *review)
+{
+    const struct lane *lane = &review->lanes[review->focus];
+    char text[FILTER_TEXT_SIZE];
+    display_filter_text(&lane->filter, text);
+    review_say(review, INK_DIM, "%s: %s%s", lane->trace->name,
+               *text ? "drawn through " : "no filter", text);
+}
+
+static bool filter_action(struct review *review, enum action action)
+{
+    struct lane *lane = &review->lanes[review->focus];
+    double rate_hz = lane->trace->rate_hz;
+    if (action != ACTION_HIGH_PASS && action != ACTION_LOW_PASS && action != ACTION_NOTCH)
+        return false;
+    if (lane->trace->times_ns) {
+        review_say(review, INK_WARN, "%s has no even rate: it cannot be filtered",
+                   lane->trace->name);
+        return true;
+    }
+    if (action == ACTION_HIGH_PASS)
+        display_filter_next_high_pass(&lane->filter, rate_hz);
+    else if (action == ACTION_LOW_PASS)
+        display_filter_next_low_pass(&lane->filter, rate_hz);
+    else
+        display_filter_next_notch(&lane->filter, rate_hz);
+    say_filter(review);
+    return true;
+}
+
+static bool gain_action(struct review *review, enum action action)
+{
+    struct lane *lane = &review->lanes[review->focus];
+    switch (action) {
+    case ACTION_GAIN_UP:
+    case ACTION_GAIN_DOWN:
+        change_gain(lane, action == ACTION_GAIN_UP);
+        return true;
+    case ACTION_GAIN_AUTOMATIC:
+        lane->fixed = false;
+        return true;
+    default:
+        return filter_action(review, action);
+    }
+}
+
+static bool order_action(struct review *review, enum action action)
+{
+    switch (action) {
+    case ACTION_LANE_UP:
+    case ACTION_LANE_DOWN:
+        move_focus(review, action == ACTION_LANE_DOWN);
+        return true;
+    case ACTION_LANE_RAISE:
+    case ACTION_LANE_SINK:
+        move_lane(review, action == ACTION_LANE_SINK);
+        return true;
+    case ACTION_LANES_TALLER:
+    case ACTION_LANES_LOWER:
+        change_height(review, action == ACTION_LANES_TALLER ? 1 : -1);
+        return true;
+    case ACTION_LANE_HIDE:
+        hide_lane(review);
+        return true;
+    case ACTION_LANES_SHOW:
+        show_lanes(review);
+        return true;
+    default:
+        return false;
+    }
+}
+
+bool review_lane_action(struct review *review, enum action action)
+{
+    bool mine = order_action(review, action);
+    if (!mine && review->focus < review->lane_count)
+        mine = gain_action(review, action);
+    if (mine)
+        scroll_to_focus(review);
+    return mine;
+}
