@@ -62,7 +62,7 @@ static int64_t edge_sample(const struct trace *trace, int64_t at_ns, bool whole)
     const struct run *run = &trace->runs[at];
     int64_t sample = run_sample_at(run, at_ns);
     int64_t block = (sample + OVERVIEW_BLOCK / 2) / OVERVIEW_BLOCK * OVERVIEW_BLOCK;
-    bool inside = at_ns >= run->start_ns && block >= run->first && block <= run->first + run->count;
+    bool inside = at_ns > run->start_ns && block >= run->first && block <= run->first + run->count;
     return whole && inside ? block : sample;
 }
 

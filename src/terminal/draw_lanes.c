@@ -12,10 +12,10 @@ enum { DOT_ROWS_PER_CELL = 4 };
 
 /* ---- the gutter ---- */
 
-/* A number as precise as a range of `span` deserves: "1.25" in 2 mV, "118" in 200 mm[Hg]. */
+/* A number as precise as a range of `span` deserves: "1.2" in 2 mV, "118" in 200 mm[Hg]. */
 static void number_text(double value, double span, int more, char out[VALUE_TEXT_SIZE])
 {
-    int digits = span > 0 ? 2 - (int)floor(log10(span)) + more : 2;
+    int digits = span > 0 ? 1 - (int)floor(log10(span)) + more : 2;
     digits = digits < 0 ? 0 : digits > 6 ? 6 : digits;
     if (isnan(value))
         (void)snprintf(out, VALUE_TEXT_SIZE, "--");
@@ -103,12 +103,14 @@ static void draw_gutter(const struct review *review, struct canvas *canvas, cons
 {
     int end = review->layout.gutter - 1, limit = end;
     bool focused = lane == &review->lanes[review->focus];
-    char text[VALUE_TEXT_SIZE];
+    char text[VALUE_TEXT_SIZE + 1];
     if (end < 4)
         return;
     if (rows >= 2) {
-        number_text(high, high - low, 0, text);
-        limit = put_right(canvas, row, end, INK_DIM, text) - 1;
+        /* '=' where the gain is set by hand. */
+        text[0] = '=';
+        number_text(high, high - low, 0, text + 1);
+        limit = put_right(canvas, row, end, INK_DIM, lane->fixed ? text : text + 1) - 1;
     }
     if (focused)
         canvas_put(canvas, row, 0, 0x25b8, INK_STRONG);

@@ -129,6 +129,21 @@ static void span_text(int64_t span_ns, char *out, size_t size)
                        (int)(ns % NS_PER_HOUR / NS_PER_MIN));
 }
 
+/* On a screen too narrow for a gutter, the chosen trace's value is read here. */
+static int draw_focus_value(const struct review *review, struct canvas *canvas, int at)
+{
+    const struct part *part = &review->layout.readout;
+    float value;
+    int64_t age;
+    if (review->layout.gutter > 0 || review->focus >= review->lane_count)
+        return at;
+    const struct trace *trace = review->lanes[review->focus].trace;
+    if (trace_value_at(trace, review->cursor_ns, &value, &age, NULL) || isnan(value))
+        return at;
+    return canvas_printf(canvas, part->row, at + 1, part->columns, INK_STRONG, "%.4g %s",
+                         (double)value, trace->unit);
+}
+
 static void draw_readout(const struct review *review, struct canvas *canvas)
 {
     const struct part *part = &review->layout.readout;
@@ -139,6 +154,7 @@ static void draw_readout(const struct review *review, struct canvas *canvas)
     review_clock_text(review, review->cursor_ns, decimals, clock);
     ns_format_elapsed(review->cursor_ns, decimals, elapsed);
     int at = canvas_text(canvas, row, 1, end, INK_CURSOR, clock);
+    at = draw_focus_value(review, canvas, at);
     if (strcmp(clock, elapsed) != 0)
         at = canvas_text(canvas, row, at + 2, end, INK_TEXT, elapsed);
     if (review->second_ns == NS_NONE) {
@@ -218,7 +234,8 @@ static void draw_mark(const struct review *review, struct canvas *canvas)
     if (mark->rater && *mark->rater)
         at = canvas_text(canvas, row, at + 2, end, INK_DIM, mark->rater);
     ns_format_elapsed(mark->onset_ns, 3, elapsed);
-    (void)canvas_text(canvas, row, at + 2, end, INK_DIM, elapsed);
+    if (at + 2 + (int)strlen(elapsed) < end)
+        (void)canvas_text(canvas, row, at + 2, end, INK_DIM, elapsed);
 }
 
 static const char *hint(const struct review *review)

@@ -123,6 +123,11 @@ void draw_axis(const struct review *review, struct canvas *canvas)
         if (column + 1 + (int)strlen(text) <= part->columns)
             (void)canvas_text(canvas, part->row, column + 1, part->columns, INK_DIM, text);
     }
-    (void)canvas_text(canvas, part->row, 1, review->layout.gutter, INK_DIM,
-                      epoch == NS_NONE ? "from start" : "time of day");
+    size_t shown = lanes_shown(review), on_screen = lanes_on_screen(review);
+    if (on_screen > 0 && on_screen < shown)
+        (void)canvas_printf(canvas, part->row, 1, review->layout.gutter, INK_DIM, "%zu-%zu of %zu",
+                            review->first_lane + 1, review->first_lane + on_screen, shown);
+    else
+        (void)canvas_text(canvas, part->row, 1, review->layout.gutter, INK_DIM,
+                          epoch == NS_NONE ? "from start" : "time of day");
 }

@@ -17,7 +17,8 @@ static bool takes_value(const struct code *code)
 enum mark_state mark_state_now(const struct code *code, const struct mark *mark)
 {
     bool lacks = (takes_value(code) && !mark->has_value) ||
-                 (code && code->kind == CODE_SPAN && mark->until_ns == NS_NONE);
+                 (code && code->kind == CODE_SPAN && mark->until_ns == NS_NONE) ||
+                 (code && code->kind == CODE_NOTE && !*mark->note);
     if (mark->state == MARK_REJECTED || (mark->state == MARK_CONFIRMED && !lacks))
         return mark->state;
     return lacks ? MARK_INCOMPLETE : MARK_MARKED;

@@ -183,9 +183,12 @@ static bool gain_action(struct review *review, enum action action)
     case ACTION_GAIN_UP:
     case ACTION_GAIN_DOWN:
         change_gain(lane, action == ACTION_GAIN_UP);
+        review_say(review, INK_DIM, "%s: %g %s a division, %d divisions a lane; ~ fits again",
+                   lane->trace->name, lane->per_division, lane->trace->unit, LANE_DIVISIONS);
         return true;
     case ACTION_GAIN_AUTOMATIC:
         lane->fixed = false;
+        review_say(review, INK_DIM, "%s: fitted to what is visible", lane->trace->name);
         return true;
     default:
         return filter_action(review, action);
