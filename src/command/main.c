@@ -10,8 +10,9 @@
 #include "command/command_impl.h"
 
 const struct command *const commands[] = {
-    &command_start,  &command_attach,  &command_inspect, &command_mark, &command_marks,
-    &command_import, &command_history, &command_derive,  &command_help, NULL,
+    &command_start, &command_attach, &command_inspect, &command_mark,
+    &command_marks, &command_import, &command_history, &command_derive,
+    &command_frame, &command_review, &command_help,    NULL,
 };
 
 static const struct command *find(const char *name)

@@ -66,7 +66,9 @@ static void draw_value(const struct review *review, struct canvas *canvas, const
     char text[VALUE_TEXT_SIZE];
     number_text((double)reading.value, span, 1, text);
     int at = canvas_text(canvas, row, 2, end, INK_STRONG, text);
-    at = canvas_text(canvas, row, at + 1, end, INK_DIM, lane->trace->unit);
+    /* Where all goes into one row, a difference needs the unit's place. */
+    if (tall || review->second_ns == NS_NONE)
+        at = canvas_text(canvas, row, at + 1, end, INK_DIM, lane->trace->unit);
     int next_row = tall ? row + 1 : row, next = tall ? 2 : at + 1;
     if (review->second_ns != NS_NONE) {
         number_text((double)(reading.value - reading.second), span, 1, text);
@@ -191,7 +193,8 @@ static void draw_upright(struct review *review, struct canvas *canvas, int64_t a
     int column = review->layout.gutter + (int)cell;
     for (int row = part->row; row < part->row + part->rows; row++) {
         struct cell *there = &canvas->cells[row * canvas->columns + column];
-        if (there->glyph == 0) {
+        bool braille = (there->glyph & ~0xffu) == 0x2800;
+        if (there->glyph == 0 || (over && !braille)) {
             canvas_put(canvas, row, column, glyph, ink);
         } else if (over) {
             there->ink = (uint8_t)ink;

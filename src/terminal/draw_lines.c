@@ -155,7 +155,8 @@ static void draw_readout(const struct review *review, struct canvas *canvas)
     ns_format_elapsed(review->cursor_ns, decimals, elapsed);
     int at = canvas_text(canvas, row, 1, end, INK_CURSOR, clock);
     at = draw_focus_value(review, canvas, at);
-    if (strcmp(clock, elapsed) != 0)
+    bool room = review->second_ns == NS_NONE || part->columns >= 100;
+    if (strcmp(clock, elapsed) != 0 && room)
         at = canvas_text(canvas, row, at + 2, end, INK_TEXT, elapsed);
     if (review->second_ns == NS_NONE) {
         span_text(review->view.span_ns, text, sizeof text);

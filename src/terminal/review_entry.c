@@ -193,16 +193,16 @@ static void save_entry(struct review *review, size_t index)
         return;
     mark.state = mark_state_now(review->codes[index], &mark);
     struct err err = {0};
-    if (store_mark_change(review->store, &mark, "", &err)) {
-        refuse(review, err.text);
-        review_say(review, INK_ALARM, "NOT SAVED: %s", err.text);
-        return;
-    }
     int64_t id = mark.id;
-    bool moved = review->asking == ASK_ONSET;
-    prompt_close(&review->prompt);
+    int failed = store_mark_change(review->store, &mark, "", &err);
     review_reload(review);
     review->chosen_id = id;
+    if (failed) {
+        refuse(review, err.text);
+        return;
+    }
+    bool moved = review->asking == ASK_ONSET;
+    prompt_close(&review->prompt);
     index = review_chosen_index(review);
     if (moved && index < review->mark_count)
         review_choose(review, index);

@@ -91,7 +91,8 @@ struct review {
 void review_say(struct review *review, enum ink ink, const char *format, ...) PRINTF_LIKE(3, 4);
 void review_say_read_only(struct review *review);
 bool review_writable(const struct review *review);
-/* Fetches the marks again; says so when that fails. */
+/* Fetches the marks again; says so when that fails. After every call that may change the store,
+ * even one that failed: the list fetched before is no longer valid. */
 void review_reload(struct review *review);
 /* Index of the chosen mark; mark_count when there is none. */
 size_t review_chosen_index(const struct review *review);

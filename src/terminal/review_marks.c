@@ -47,12 +47,12 @@ void review_retry(struct review *review)
             break;
         saved++;
     }
+    review_reload(review);
     if (saved == 0)
         return;
     review->unsaved_count -= saved;
     memmove(review->unsaved, review->unsaved + saved,
             review->unsaved_count * sizeof *review->unsaved);
-    review_reload(review);
     review_say(review, INK_GOOD, "saved late: %zu mark%s", saved, saved == 1 ? "" : "s");
 }
 
@@ -60,12 +60,13 @@ static bool change(struct review *review, const struct mark *mark, const char *s
 {
     struct err err = {0};
     int64_t id = mark->id;
-    if (store_mark_change(review->store, mark, "", &err)) {
+    int failed = store_mark_change(review->store, mark, "", &err);
+    review_reload(review);
+    review->chosen_id = id;
+    if (failed) {
         review_say(review, INK_ALARM, "NOT SAVED: %s", err.text);
         return false;
     }
-    review_reload(review);
-    review->chosen_id = id;
     size_t index = review_chosen_index(review);
     if (index < review->mark_count)
         say_mark(review, said, index);
@@ -104,11 +105,12 @@ static void add(struct review *review, const struct code *code)
     mark.state = mark_state_now(code, &mark);
     struct err err = {0};
     int64_t id;
-    if (store_mark_add(review->store, &mark, "", &id, &err)) {
+    int failed = store_mark_add(review->store, &mark, "", &id, &err);
+    review_reload(review);
+    if (failed) {
         keep_unsaved(review, &mark, &err);
         return;
     }
-    review_reload(review);
     review->chosen_id = id;
     size_t index = review_chosen_index(review);
     if (index == review->mark_count)
@@ -203,14 +205,13 @@ static void travel(struct review *review, bool back)
     char what[160] = "";
     int failed = back ? store_undo(review->store, &done, what, sizeof what, &err)
                       : store_redo(review->store, &done, what, sizeof what, &err);
+    review_reload(review);
     if (failed)
         review_say(review, INK_ALARM, "NOT SAVED: %s", err.text);
     else if (done)
         review_say(review, INK_GOOD, "saved: %s %s", back ? "undone:" : "redone:", what);
     else
         review_say(review, INK_DIM, "nothing to %s", back ? "undo" : "redo");
-    if (done)
-        review_reload(review);
     if (done && review->chosen_id == 0)
         review_go(review, review->cursor_ns);
 }

@@ -192,7 +192,8 @@ Test(review_columns, filters_take_what_they_say_and_move_nothing)
     fill(trace, &view, &no_filter, plain, &answer);
     fill(trace, &view, &filter, filtered, &answer);
     cr_expect_not(answer.unfiltered);
-    cr_expect_float_eq(swing(filtered), 2, 0.05, "10 Hz of 2 stays, has %g", swing(filtered));
+    cr_expect_float_eq(swing(filtered), 2, 0.05, "10 Hz of 2 stays, has %g",
+                       (double)swing(filtered));
     cr_expect_gt(swing(plain), 2.5f);
     /* 10 Hz starts at phase 0 at the view's edge: its first crest is 25 ms later, dot 3. */
     cr_expect_float_eq(filtered[3].high, 1, 0.05);
