@@ -14,20 +14,29 @@ static void draw_bar(struct canvas *canvas, const struct part *part)
     canvas_fill(canvas, part->row, part->column, part->rows, part->columns, ' ', INK_BAR);
 }
 
-/* Share of the overviews that is built, in percent; 100 when all are. */
-static int overview_percent(const struct review *review)
+/* "overview 43 %" while overviews are built, what stopped them when they cannot be; "" when all
+ * is there. That a finished one could not be kept on disk only costs time at the next opening. */
+static void overview_text(const struct review *review, char *out, size_t size)
 {
     int64_t done = 0, total = 0;
+    struct err failure = {0};
     for (size_t i = 0; i < casefile_recording_count(review->casefile); i++) {
         const struct attached *attached = casefile_recording(review->casefile, i);
         int64_t part = 0, whole = 0;
+        struct err why = {0};
         if (!attached->overview)
             continue;
-        overview_progress(attached->overview, &part, &whole, NULL);
+        overview_progress(attached->overview, &part, &whole, &why);
+        if (why.code && part < whole)
+            failure = why;
         done += part;
         total += whole;
     }
-    return done >= total ? 100 : (int)mul_div(done, 100, total);
+    out[0] = '\0';
+    if (failure.code)
+        (void)snprintf(out, size, "overview stopped: %.60s", failure.text);
+    else if (done < total)
+        (void)snprintf(out, size, "overview %d %%", (int)mul_div(done, 100, total));
 }
 
 static bool clocks_unaligned(const struct review *review)
@@ -75,11 +84,8 @@ static void draw_title_right(const struct review *review, struct canvas *canvas,
     }
     if (clocks_unaligned(review))
         end = put_right(canvas, part->row, end, least, INK_WARN, "clocks unaligned");
-    int percent = overview_percent(review);
-    if (percent < 100) {
-        (void)snprintf(text, sizeof text, "overview %d %%", percent);
-        end = put_right(canvas, part->row, end, least, INK_BAR, text);
-    }
+    overview_text(review, text, sizeof text);
+    end = put_right(canvas, part->row, end, least, INK_BAR, text);
     if (review->store) {
         size_t incomplete = count_state(review, MARK_INCOMPLETE);
         int at = snprintf(text, sizeof text, "%zu mark%s", review->mark_count,

@@ -109,6 +109,10 @@ void review_relayout(struct review *review);
 /* Lanes not hidden; index of the nth of them (lane_count when there is none). */
 size_t lanes_shown(const struct review *review);
 size_t lane_shown_at(const struct review *review, size_t nth);
+/* Number of the chosen lane among those shown; scrolls so that it is on screen, and so that no
+ * room is left below the last one. */
+size_t lane_focus_number(const struct review *review);
+void review_scroll_lanes(struct review *review);
 /* Rows of the nth lane on screen (0 = topmost); how many there is room for. */
 size_t lanes_on_screen(const struct review *review);
 int lane_height(const struct review *review, size_t nth);

@@ -82,30 +82,9 @@ static void change_gain(struct lane *lane, bool larger)
         larger ? round_step(lane->per_division / 2.6) : round_step(lane->per_division * 1.01);
 }
 
-/* Number of the focused lane among those shown. */
-static size_t focus_number(const struct review *review)
-{
-    size_t number = 0;
-    for (size_t i = 0; i < review->focus; i++)
-        number += !review->lanes[i].hidden;
-    return number;
-}
-
-static void scroll_to_focus(struct review *review)
-{
-    size_t number = focus_number(review), room = lanes_on_screen(review);
-    if (room == 0 || number < review->first_lane)
-        review->first_lane = number;
-    else if (number >= review->first_lane + room)
-        review->first_lane = number - room + 1;
-    size_t shown = lanes_shown(review);
-    if (review->first_lane + room > shown)
-        review->first_lane = shown - room;
-}
-
 static void move_focus(struct review *review, bool down)
 {
-    size_t number = focus_number(review);
+    size_t number = lane_focus_number(review);
     if (down ? number + 1 < lanes_shown(review) : number > 0)
         review->focus = lane_shown_at(review, down ? number + 1 : number - 1);
 }
@@ -122,7 +101,7 @@ static void move_lane(struct review *review, bool down)
 static void hide_lane(struct review *review)
 {
     struct lane *lane = &review->lanes[review->focus];
-    size_t number = focus_number(review);
+    size_t number = lane_focus_number(review);
     lane->hidden = true;
     size_t shown = lanes_shown(review);
     if (number >= shown && number > 0)
@@ -227,6 +206,6 @@ bool review_lane_action(struct review *review, enum action action)
     if (!mine && review->focus < review->lane_count)
         mine = gain_action(review, action);
     if (mine)
-        scroll_to_focus(review);
+        review_scroll_lanes(review);
     return mine;
 }

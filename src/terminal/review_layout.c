@@ -78,6 +78,27 @@ void review_relayout(struct review *review)
     review->layout = layout;
     int cells = layout.lanes.columns - layout.gutter;
     review->view.cells = cells > 1 ? cells : 1;
+    review_scroll_lanes(review);
+}
+
+size_t lane_focus_number(const struct review *review)
+{
+    size_t number = 0;
+    for (size_t i = 0; i < review->focus && i < review->lane_count; i++)
+        number += !review->lanes[i].hidden;
+    return number;
+}
+
+void review_scroll_lanes(struct review *review)
+{
+    size_t number = lane_focus_number(review), shown = lanes_shown(review);
+    size_t room = lanes_on_screen(review);
+    if (number < review->first_lane)
+        review->first_lane = number;
+    else if (number >= review->first_lane + room)
+        review->first_lane = number + 1 - room;
+    if (review->first_lane + room > shown)
+        review->first_lane = shown - room;
 }
 
 size_t lanes_shown(const struct review *review)
