@@ -55,6 +55,13 @@ static void fill_nan(float *values, size_t count)
         values[i] = NAN;
 }
 
+/* Forgets the signal so far. */
+static void restart(struct ecg_lead *lead)
+{
+    filter_restart(&lead->filter);
+    lead->missing = lead->bridge;
+}
+
 int ecg_lead_init(struct ecg_lead *lead, const struct trace *trace, int64_t origin_ns,
                   int64_t block, struct err *err)
 {
@@ -69,6 +76,7 @@ int ecg_lead_init(struct ecg_lead *lead, const struct trace *trace, int64_t orig
         return failed;
     }
     lead->bridge = (int64_t)(trace->rate_hz * (double)BRIDGE_NS / 1e9);
+    restart(lead);
     fill_nan(lead->band, DERIVATIVE + ECG_BIN);
     fill_nan(lead->slope, ECG_SPAN);
     fill_nan(lead->feature, ECG_SPAN);
@@ -93,12 +101,12 @@ static void bridge(struct ecg_lead *lead, float *values, int64_t count)
         if (!isnan(values[i])) {
             lead->missing = 0;
             lead->last_input = values[i];
-        } else if (lead->filter.running && lead->missing < lead->bridge) {
+        } else if (lead->missing < lead->bridge) {
             lead->missing++;
             values[i] = lead->last_input;
         }
         if (isnan(values[i]))
-            lead->missing = lead->bridge;
+            lead->missing = lead->bridge; /* too long: nothing to bridge from until one is there */
     }
 }
 
@@ -134,7 +142,7 @@ static int change_run(struct ecg_lead *lead, size_t run, struct err *err)
     if (follows && runs[run].start_ns - run_end_ns(&runs[run - 1]) <= BRIDGE_NS)
         failed = hold(lead, runs[run].first - 1, err);
     else
-        filter_restart(&lead->filter);
+        restart(lead);
     lead->run = run;
     lead->held_first = runs[run].first;
     lead->held_count = 0;

@@ -208,6 +208,64 @@ Test(beats, block_size_changes_nothing)
     free(ecg);
 }
 
+static uint32_t draw(uint32_t *seed, uint32_t below)
+{
+    *seed = *seed * 1664525u + 1013904223u;
+    return (*seed >> 8) % below;
+}
+
+/* A lead in up to five runs of any length, with pauses from none to seconds and samples missing
+ * in ones and in stretches, from the first one on. */
+static struct trace *torn_lead(uint32_t *seed)
+{
+    static const double rates[] = {100, 128, 333.3, 360, 500, 1000};
+    double rate_hz = rates[draw(seed, 6)];
+    struct run runs[5];
+    size_t run_count = 1 + draw(seed, 5);
+    int64_t at_ns = (int64_t)draw(seed, 3000) * NS_PER_MS, first = 0;
+    for (size_t r = 0; r < run_count; r++) {
+        int64_t count = 1 + draw(seed, 5000);
+        runs[r] = (struct run){at_ns, llround((double)count * 1e9 / rate_hz), first, count};
+        at_ns = run_end_ns(&runs[r]) + NS_PER_MS * draw(seed, draw(seed, 3) ? 30 : 4000);
+        first += count;
+    }
+    float *samples = malloc((size_t)first * sizeof *samples);
+    cr_assert_not_null(samples);
+    int64_t missing = draw(seed, 20);
+    for (int64_t i = 0; i < first; i++) {
+        double phase = fmod((double)i / rate_hz, 0.8) - 0.4;
+        if (draw(seed, 400) == 0)
+            missing = draw(seed, 40);
+        samples[i] = missing-- > 0 ? NAN : (float)exp(-phase * phase / 4e-4);
+    }
+    struct trace *trace = NULL;
+    struct err err = {0};
+    cr_assert_eq(memory_trace_new("ECG", "mV", runs, run_count, samples, 0, &trace, &err), 0);
+    return trace;
+}
+
+Test(beats, block_size_changes_nothing_in_torn_recordings)
+{
+    uint32_t seed = 5;
+    size_t beats = 0;
+    for (int round = 0; round < 60; round++) {
+        struct trace *traces[] = {torn_lead(&seed), torn_lead(&seed)};
+        const struct trace *const *leads = (const struct trace *const *)traces;
+        struct train a = beats_of(leads, 2, 4096), b = beats_of(leads, 2, 1 + draw(&seed, 300));
+        cr_assert_eq(a.count, b.count, "round %d", round);
+        for (size_t i = 0; i < a.count; i++) {
+            cr_assert_eq(a.events[i].time_ns, b.events[i].time_ns, "round %d", round);
+            cr_assert_eq(a.events[i].flags, b.events[i].flags);
+        }
+        beats += a.count;
+        train_free(&a);
+        train_free(&b);
+        trace_free(traces[0]);
+        trace_free(traces[1]);
+    }
+    cr_expect_gt(beats, 500, "only %zu beats", beats);
+}
+
 Test(beats, a_shift_in_time_shifts_the_beats)
 {
     struct ecg *ecg = ecg_new(250, 30, 0.8);
