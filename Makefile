@@ -151,8 +151,9 @@ $(foreach s,$(SUITES),$(eval $(call suite,$(s))))
 
 # The terminal driver is a plain program: a pseudo-terminal, libvterm and the real binary.
 TERMINAL_TESTS := $(patsubst tests/%.c,build/tests/%,$(wildcard tests/terminal/test_*.c))
-build/tests/terminal/test_%: build/tests/terminal/test_%.o build/tests/terminal/screen.o
-	@$(CC) $(asan_CFLAGS) $^ -lvterm -lutil -o $@
+build/tests/terminal/test_%: build/tests/terminal/test_%.o build/tests/terminal/screen.o \
+                             $(asan_SCREENS) $(asan_LIB)
+	@$(CC) $(asan_CFLAGS) $^ -lvterm -lutil $(LIBS) -o $@
 -include $(TERMINAL_TESTS:=.d)
 
 FUZZERS := $(patsubst tests/fuzz/%.c,build/fuzz/%,$(wildcard tests/fuzz/fuzz_*.c))

@@ -107,6 +107,7 @@ int painter_paint(struct painter *painter, const struct canvas *canvas, struct s
         pen = paint_row(painter, canvas, row, pen, out);
     memcpy(painter->there.cells, canvas->cells,
            (size_t)canvas->rows * (size_t)canvas->columns * sizeof *canvas->cells);
-    painter->fresh = false;
-    return str_failed(out) ? err_memory(err, "painting the screen") : ERR_OK;
+    /* Bytes that were lost never reach the screen: the next frame paints all of it. */
+    painter->fresh = str_failed(out);
+    return painter->fresh ? err_memory(err, "painting the screen") : ERR_OK;
 }
