@@ -100,7 +100,8 @@ static int extended_key(const char *name, const char *usual, int fallback)
 
 static enum theme_depth colour_depth(void)
 {
-    int colours = tigetnum("colors");
+    const char *plain = getenv("NO_COLOR");
+    int colours = plain && *plain ? 0 : tigetnum("colors");
     return colours >= MANY_COLOURS ? THEME_256 : colours >= BASIC_COLOURS ? THEME_8 : THEME_NONE;
 }
 
@@ -315,10 +316,9 @@ void session_wait(struct session *session, int timeout_ms, struct event *out)
         out->kind = EVENT_NOTHING; /* a signal: its byte is in the pipe */
     else if (waiting[1].revents)
         take_signals(session, out);
-    else if (waiting[0].revents & POLLIN)
-        out->kind = take_key(session, out) ? out->kind : EVENT_NOTHING;
-    else if (waiting[0].revents)
-        out->kind = EVENT_END; /* hung up */
+    else if (waiting[0].revents && !take_key(session, out))
+        /* A terminal that hung up stays readable, with nothing to read. */
+        out->kind = waiting[0].revents & ~POLLIN ? EVENT_END : EVENT_NOTHING;
 }
 
 static int write_all(const char *bytes, size_t count, struct err *err)
