@@ -139,7 +139,7 @@ static double flushed(const struct scenario *scenario, double t_s, double pressu
 static double beat_shape(double u, double pulse, double ejection_s)
 {
     double closing = ejection_s + 0.02;
-    return pulse * (0.17 * bump(u, closing + 0.07, 0.045) - 0.13 * bump(u, closing, 0.020));
+    return pulse * (0.12 * bump(u, closing + 0.075, 0.045) - 0.14 * bump(u, closing, 0.022));
 }
 
 static int make_pressure(struct signals *signals, struct err *err)
@@ -154,11 +154,11 @@ static int make_pressure(struct signals *signals, struct err *err)
         double u = since_beat(signals, t - transit_s, &beat, &rr);
         double ejection = 0.16 + 0.14 * rr, phase = breath_phase(signals, t, &breath);
         double swing = phase < 0 ? 0 : sin(2 * M_PI * phase);
-        double pulse = (46 - 8 * scenario_depth(scenario, t)) * (1 + 0.07 * swing);
+        double pulse = (68 - 12 * scenario_depth(scenario, t)) * (1 + 0.07 * swing);
         double floor_ = scenario_pressure_mmhg(scenario, t) - pulse * runoff_s / rr;
-        double inflow = u > 0 && u < ejection ? pow(sin(M_PI * pow(u / ejection, 0.7)), 2) : 0;
-        /* 1.71: the mean of that shape over the ejection is 1 / 1.71. */
-        filled += step * (1.71 * pulse / ejection * inflow - (filled - floor_) / runoff_s);
+        double inflow = u > 0 && u < ejection ? pow(sin(M_PI * pow(u / ejection, 0.6)), 2) : 0;
+        /* 1.936: the mean of that shape over the ejection is 1 / 1.936. */
+        filled += step * (1.936 * pulse / ejection * inflow - (filled - floor_) / runoff_s);
         signals->abp[i] =
             (float)flushed(scenario, t, filled + beat_shape(u, pulse, ejection) + 0.6 * swing);
     }
