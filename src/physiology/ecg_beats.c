@@ -96,7 +96,7 @@ static int search_run(struct search *search, struct progress *progress, struct e
 {
     int64_t bins = (search->end_ns - search->origin_ns) / (ECG_BIN * ECG_TICK_NS) + 2;
     progress_total(progress, bins);
-    for (int64_t bin = 0; bin < bins; bin++) {
+    for (int64_t done = 0; done < bins;) {
         if (progress_cancelled(progress))
             return err_set(err, ERR_CANCELLED, "beats: stopped");
         int failed = ecg_fuse_advance(&search->fuse, err);
@@ -104,7 +104,9 @@ static int search_run(struct search *search, struct progress *progress, struct e
             failed = take_event(search, &search->fuse.events[i], err);
         if (failed)
             return failed;
-        progress_add(progress, 1);
+        int64_t more = 1 + ecg_fuse_skip(&search->fuse, bins - done - 1);
+        progress_add(progress, more);
+        done += more;
     }
     return ERR_OK;
 }

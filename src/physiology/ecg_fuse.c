@@ -183,3 +183,18 @@ int ecg_fuse_advance(struct ecg_fuse *fuse, struct err *err)
     scan(fuse);
     return ERR_OK;
 }
+
+int64_t ecg_fuse_skip(struct ecg_fuse *fuse, int64_t most)
+{
+    int64_t bins = most;
+    for (size_t l = 0; l < fuse->lead_count; l++) {
+        int64_t idle = ecg_lead_idle_bins(&fuse->leads[l]);
+        bins = idle < bins ? idle : bins;
+    }
+    if (bins <= 0)
+        return 0;
+    for (size_t l = 0; l < fuse->lead_count; l++)
+        ecg_lead_skip(&fuse->leads[l], bins);
+    fuse->bin += bins;
+    return bins;
+}

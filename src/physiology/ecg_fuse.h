@@ -47,4 +47,8 @@ void ecg_fuse_fini(struct ecg_fuse *fuse);
 /* Moves on by one bin and fills events[] with what lies up to 200 ms before its end. */
 MUST_CHECK int ecg_fuse_advance(struct ecg_fuse *fuse, struct err *err);
 
+/* Skips the bins in which no lead has anything, at most `most`; returns how many. For use after
+ * ecg_fuse_advance(): recordings may be hours or years apart. */
+int64_t ecg_fuse_skip(struct ecg_fuse *fuse, int64_t most);
+
 #endif

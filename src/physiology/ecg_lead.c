@@ -230,10 +230,29 @@ int ecg_lead_advance(struct ecg_lead *lead, struct err *err)
         int failed = band_at(lead, lead->next_tick++, &lead->band[DERIVATIVE + i], err);
         if (failed)
             return failed;
+        lead->empty_ticks = isnan(lead->band[DERIVATIVE + i]) ? lead->empty_ticks + 1 : 0;
     }
     measure_slopes(lead);
     measure_bin(lead);
     return ERR_OK;
+}
+
+int64_t ecg_lead_idle_bins(const struct ecg_lead *lead)
+{
+    const struct trace *trace = lead->trace;
+    if (lead->empty_ticks < ECG_SPAN + (2 * ECG_AHEAD + 1) * ECG_BIN)
+        return 0;
+    int64_t at_ns = lead->origin_ns + lead->next_tick * ECG_TICK_NS;
+    size_t run = run_find(trace->runs, trace->run_count, at_ns);
+    if (run == trace->run_count)
+        return INT64_MAX;
+    int64_t pause_ns = trace->runs[run].start_ns - at_ns;
+    return pause_ns > 0 ? pause_ns / (ECG_BIN * ECG_TICK_NS) : 0;
+}
+
+void ecg_lead_skip(struct ecg_lead *lead, int64_t bins)
+{
+    lead->next_tick += bins * ECG_BIN;
 }
 
 static double median_of_bins(const float *bins)

@@ -48,9 +48,9 @@ struct ecg_lead {
     int64_t bridge, missing; /* missing samples in a row: at most bridged, seen so far */
     float last_input;
 
-    int64_t next_tick;
-    float *band;    /* shape (4 + ECG_BIN): the filtered signal at ticks */
-    float *slope;   /* shape (ECG_SPAN): |slope|, lead's unit a tick */
+    int64_t next_tick, empty_ticks; /* made so far; missing ones among them at the end */
+    float *band;                    /* shape (4 + ECG_BIN): the filtered signal at ticks */
+    float *slope;                   /* shape (ECG_SPAN): |slope|, lead's unit a tick */
     float *feature; /* shape (ECG_SPAN): mean of slope over the last ECG_WINDOW ticks */
     float height[2 * ECG_AHEAD + 1], floor[2 * ECG_AHEAD + 1]; /* of feature; NaN = none */
 };
@@ -64,6 +64,11 @@ void ecg_lead_fini(struct ecg_lead *lead);
 /* Moves on by one bin: what was bin + 1 becomes bin. After ecg_lead_init(), ECG_AHEAD + 1 calls
  * bring the first bin to its place. */
 MUST_CHECK int ecg_lead_advance(struct ecg_lead *lead, struct err *err);
+
+/* How many bins from here on hold nothing, known only when all that is kept is missing; INT64_MAX
+ * when nothing follows. Skipping up to that many changes nothing but the time it takes. */
+int64_t ecg_lead_idle_bins(const struct ecg_lead *lead);
+void ecg_lead_skip(struct ecg_lead *lead, int64_t bins);
 
 /* Of the bin in place: how high the feature rises at a QRS, and its middle level: medians over the
  * bins on both sides; both NaN when the lead is missing all around. */

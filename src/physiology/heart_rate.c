@@ -8,11 +8,14 @@
  * tests/published/test_heart_rate.c.
  */
 #include <math.h>
+#include <stdbool.h>
 #include <stdlib.h>
 
 #include "base/array.h"
 #include "dsp/stats.h"
 #include "physiology/derivation.h"
+
+#define SILENCE_NS 60e9
 
 enum { PARAMETER_RATE, PARAMETER_LONGEST };
 
@@ -88,32 +91,70 @@ static double usual_interval_ns(const struct train *beats, double longest_ns, do
     return count > 0 ? median(scratch, count) : 0;
 }
 
-/* Grid points k with first <= k * period <= last, as one run. The grid goes through case time 0,
- * so that it does not depend on where the beats begin. */
-static struct run grid_run(const struct train *beats, double period_ns, int64_t *first_point)
+/* The grid: runs of even samples, one for each stretch of beats. first_point is the number of the
+ * first grid point of a run, counted from case time 0. */
+struct grid {
+    struct run *runs;      /* shape (count) */
+    int64_t *first_points; /* shape (count) */
+    size_t count;
+    int64_t samples;
+};
+
+static void grid_free(struct grid *grid)
 {
-    int64_t low = (int64_t)ceil(beat_ns(beats, 0) / period_ns);
-    int64_t high = (int64_t)floor(beat_ns(beats, beats->count - 1) / period_ns);
-    int64_t count = high >= low ? high - low + 1 : 0;
-    *first_point = low;
-    return (struct run){.start_ns = llround((double)low * period_ns),
-                        .span_ns = llround((double)count * period_ns),
-                        .first = 0,
-                        .count = count};
+    free(grid->runs);
+    free(grid->first_points);
 }
 
-static int make_trace(const struct run *run, float *values, double reach_ns, struct derived *out,
-                      struct err *err)
+/* Adds the points k with first beat <= k * period <= last beat of a stretch, if there are any. They
+ * go through case time 0, so that they do not depend on where the beats begin. */
+static void add_stretch(struct grid *grid, const struct train *beats, size_t first, size_t last,
+                        double period_ns)
 {
-    int failed = memory_trace_new("heart-rate", "/min", run, run->count > 0 ? 1 : 0, values,
-                                  (int64_t)reach_ns, &out->trace, err);
+    int64_t low = (int64_t)ceil(beat_ns(beats, first) / period_ns);
+    int64_t high = (int64_t)floor(beat_ns(beats, last) / period_ns);
+    if (high < low)
+        return;
+    int64_t count = high - low + 1;
+    grid->first_points[grid->count] = low;
+    grid->runs[grid->count++] = (struct run){.start_ns = llround((double)low * period_ns),
+                                             .span_ns = llround((double)count * period_ns),
+                                             .first = grid->samples,
+                                             .count = count};
+    grid->samples += count;
+}
+
+/* Nothing is laid out over a silence of SILENCE_NS: recordings may be years apart. */
+static bool is_silence(const struct train *beats, size_t i)
+{
+    return beat_ns(beats, i + 1) - beat_ns(beats, i) > SILENCE_NS;
+}
+
+static int grid_new(struct grid *grid, const struct train *beats, double period_ns, struct err *err)
+{
+    size_t most = 1;
+    for (size_t i = 0; i + 1 < beats->count; i++)
+        most += is_silence(beats, i);
+    void *runs = NULL, *points = NULL;
+    int failed = array_new(&runs, most, sizeof(struct run), err);
+    if (!failed)
+        failed = array_new(&points, most, sizeof(int64_t), err);
+    *grid = (struct grid){.runs = runs, .first_points = points};
     if (failed)
-        free(values);
-    return failed;
+        return failed;
+    size_t first = 0;
+    for (size_t i = 0; i < beats->count; i++) {
+        if (i + 1 < beats->count && !is_silence(beats, i))
+            continue;
+        if (i > first)
+            add_stretch(grid, beats, first, i, period_ns);
+        first = i + 1;
+    }
+    return ERR_OK;
 }
 
-static int fill_rates(const struct derive_input *input, const struct run *run, int64_t first_point,
-                      double period_ns, float *values, double *reach_ns, struct err *err)
+static int fill_rates(const struct derive_input *input, const struct grid *grid, double period_ns,
+                      float *values, double *reach_ns, struct err *err)
 {
     const struct train *beats = input->train;
     double longest_ns = input->parameters[PARAMETER_LONGEST] * 1e9;
@@ -125,11 +166,32 @@ static int fill_rates(const struct derive_input *input, const struct run *run, i
         mark_bad(beats, longest_ns, last_bad);
         *reach_ns = period_ns + usual_interval_ns(beats, longest_ns, scratch);
         struct sweep sweep = {.beats = beats, .last_bad = last_bad};
-        for (int64_t k = 0; k < run->count; k++)
-            values[k] = rate_at(&sweep, (double)(first_point + k) * period_ns, period_ns);
+        for (size_t r = 0; r < grid->count; r++) {
+            for (int64_t k = 0; k < grid->runs[r].count; k++)
+                *values++ =
+                    rate_at(&sweep, (double)(grid->first_points[r] + k) * period_ns, period_ns);
+        }
     }
     free(last_bad);
     free(scratch);
+    return failed;
+}
+
+static int make_trace(const struct derive_input *input, const struct grid *grid, double period_ns,
+                      struct trace **out, struct err *err)
+{
+    void *values;
+    int failed = array_new(&values, (size_t)grid->samples, sizeof(float), err);
+    if (failed)
+        return failed;
+    double reach_ns = period_ns;
+    if (grid->samples > 0)
+        failed = fill_rates(input, grid, period_ns, values, &reach_ns, err);
+    if (!failed)
+        failed = memory_trace_new("heart-rate", "/min", grid->runs, grid->count, values,
+                                  (int64_t)reach_ns, out, err);
+    if (failed)
+        free(values);
     return failed;
 }
 
@@ -139,22 +201,12 @@ static int compute_heart_rate(const struct derive_input *input, struct derived *
     if (!input->train)
         return err_set(err, ERR_USAGE, "heart-rate needs the train of beats");
     double period_ns = 1e9 / input->parameters[PARAMETER_RATE];
-    struct run run = {0};
-    int64_t first_point = 0;
-    if (input->train->count > 1)
-        run = grid_run(input->train, period_ns, &first_point);
-    void *values;
-    int failed = array_new(&values, (size_t)run.count, sizeof(float), err);
-    if (failed)
-        return failed;
-    double reach_ns = period_ns;
-    if (run.count > 0)
-        failed = fill_rates(input, &run, first_point, period_ns, values, &reach_ns, err);
-    if (failed) {
-        free(values);
-        return failed;
-    }
-    return make_trace(&run, values, reach_ns, out, err);
+    struct grid grid;
+    int failed = grid_new(&grid, input->train, period_ns, err);
+    if (!failed)
+        failed = make_trace(input, &grid, period_ns, &out->trace, err);
+    grid_free(&grid);
+    return failed;
 }
 
 static const struct parameter heart_rate_parameters[] = {
@@ -178,7 +230,8 @@ const struct derivation derivation_heart_rate = {
               "33:13, take for real) are left out",
     .edges =
         "Not valid where the window, one sample to each side, reaches beyond the first or last "
-        "beat, into the interval across a gap, or into one above `longest`.",
+        "beat, into the interval across a gap, or into one above `longest`; no "
+        "samples at all over a silence of more than a minute.",
     .version = "1",
     .compute = compute_heart_rate,
 };

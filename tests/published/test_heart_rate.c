@@ -98,6 +98,21 @@ Test(heart_rate, no_rate_across_a_gap_or_a_pause)
     trace_free(trace);
 }
 
+/* A recorder whose clock is 60 years off: no samples are laid out in between. */
+Test(heart_rate, nothing_is_laid_over_a_long_silence)
+{
+    static const double beats[] = {1, 2, 3, 4, 1.9e9, 1.9e9 + 1, 1.9e9 + 2};
+    static const uint8_t flags[] = {0, 0, 0, 0, TRAIN_GAP, 0, 0};
+    struct trace *trace = rate_of(beats, flags, 7, 4);
+    cr_assert_eq(trace->run_count, 2);
+    cr_expect_eq(trace->samples, 13 + 9);
+    cr_expect_float_eq(value_at(trace, 2.5), 60, 1e-4);
+    cr_expect_float_eq(value_at(trace, 1.9e9 + 1), 60, 1e-4);
+    cr_expect(isnan(value_at(trace, 4)));
+    cr_expect(isnan(value_at(trace, 1.9e9)));
+    trace_free(trace);
+}
+
 /* The grid goes through case time 0: beats that begin later give the same values at the same
  * instants, whatever the rate. */
 Test(heart_rate, grid_does_not_depend_on_where_the_beats_begin)

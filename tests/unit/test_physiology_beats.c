@@ -333,6 +333,29 @@ Test(beats, no_beats_inside_a_gap_and_a_flag_after_it)
     free(ecg);
 }
 
+/* The second recording of a case comes 60 years later (a clock that was never set): the search does
+ * not walk through them, and finds what it finds in that recording alone. */
+Test(beats, a_pause_of_years_costs_nothing, .timeout = 20)
+{
+    struct ecg *ecg = ecg_new(250, 40, 0.8);
+    const int64_t later_ns = 60 * 365 * NS_PER_DAY;
+    struct trace *traces[] = {trace_of(ecg, lead_new(ecg, 1, 0.1, 0.02), 0),
+                              trace_of(ecg, lead_new(ecg, 1, 0.1, 0.02), later_ns)};
+    struct train alone = beats_of((const struct trace *const *)traces, 1, 4096);
+    struct train both = beats_of((const struct trace *const *)traces, 2, 4096);
+    cr_assert_eq(both.count, 2 * alone.count);
+    for (size_t i = 0; i < alone.count; i++) {
+        cr_expect_eq(both.events[i].time_ns, alone.events[i].time_ns);
+        cr_expect_eq(both.events[i + alone.count].time_ns, alone.events[i].time_ns + later_ns);
+        cr_expect_eq(both.events[i + alone.count].flags, i == 0 ? TRAIN_GAP : TRAIN_NORMAL);
+    }
+    train_free(&alone);
+    train_free(&both);
+    trace_free(traces[0]);
+    trace_free(traces[1]);
+    free(ecg);
+}
+
 /* One lead is noise from 20 s on, the other from the start to 20 s: together they lose nothing. */
 Test(beats, leads_stand_in_for_each_other)
 {
