@@ -143,6 +143,24 @@ static float value_between(const struct trace *trace, const struct piece *piece,
     return before + part * (after - before);
 }
 
+/* Extremes of samples [from, to) as far as they were read. A NaN fails every comparison, and so is
+ * left out without being asked for; the loop has no branch and runs as vectors. */
+static void widen_all(struct column *column, const struct piece *piece, int64_t from, int64_t to)
+{
+    const float *samples = piece->samples;
+    float low = INFINITY, high = -INFINITY;
+    from = from > piece->first ? from - piece->first : 0;
+    to = to - piece->first < piece->count ? to - piece->first : piece->count;
+    for (int64_t i = from; i < to; i++) {
+        low = samples[i] < low ? samples[i] : low;
+        high = samples[i] > high ? samples[i] : high;
+    }
+    if (low <= high) {
+        widen(column, low);
+        widen(column, high);
+    }
+}
+
 static void fill_from_samples(const struct trace *trace, const struct view *view,
                               const struct piece *piece, const int64_t *edges, struct column *out)
 {
@@ -151,8 +169,7 @@ static void fill_from_samples(const struct trace *trace, const struct view *view
         float right = value_between(trace, piece, view_dot_ns(view, dot + 1));
         out[dot].kind = COLUMN_NOTHING;
         widen(&out[dot], left);
-        for (int64_t k = edges[dot]; k < edges[dot + 1]; k++)
-            widen(&out[dot], sample_of(piece, k));
+        widen_all(&out[dot], piece, edges[dot], edges[dot + 1]);
         widen(&out[dot], right);
         left = right;
     }

@@ -69,12 +69,12 @@ bool channel_trace_minmax(const struct trace *trace, int64_t first, int64_t coun
                           float *high)
 {
     const struct channel_trace *channel = self(trace);
-    if (count > SHORT_RANGE && channel->overview)
-        return overview_minmax(channel->overview, channel->channel, first, count, low, high) ==
-               OVERVIEW_EXACT;
-    if (count > SHORT_RANGE)
-        return false;
-    return trace_minmax(trace, first, count, low, high, NULL) == ERR_OK;
+    /* From a block on a look-up is quicker than reading, where it is built. */
+    if (count >= OVERVIEW_BLOCK && channel->overview &&
+        overview_minmax(channel->overview, channel->channel, first, count, low, high) ==
+            OVERVIEW_EXACT)
+        return true;
+    return count <= SHORT_RANGE && trace_minmax(trace, first, count, low, high, NULL) == ERR_OK;
 }
 
 /* Times of an irregular channel, mapped. */
