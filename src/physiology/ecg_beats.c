@@ -60,15 +60,21 @@ static void search_close(struct search *search)
     free(search->finders);
 }
 
-/* Puts a QRS on its R peak and adds it to the train. */
+/* Puts a QRS on its R peak and adds it to the train. The lead may have come off just there: then
+ * the next one that is there tells the place. */
 static int add_beat(struct search *search, const struct qrs_peak *peak, struct err *err)
 {
     int64_t about_ns = search->origin_ns + (peak->tick - ECG_LAG) * ECG_TICK_NS, at_ns;
     float height;
-    bool found;
-    int failed = r_peak_find(&search->finders[peak->lead], about_ns, &at_ns, &height, &found, err);
-    if (failed || !found)
-        return failed;
+    bool found = false;
+    for (size_t i = 0; i < search->lead_count && !found; i++) {
+        size_t lead = (peak->lead + i) % search->lead_count;
+        int failed = r_peak_find(&search->finders[lead], about_ns, &at_ns, &height, &found, err);
+        if (failed)
+            return failed;
+    }
+    if (!found)
+        return ERR_OK;
     unsigned flags = search->after_gap ? TRAIN_GAP : TRAIN_NORMAL;
     flags |= peak->doubtful ? TRAIN_DOUBTFUL : TRAIN_NORMAL;
     search->after_gap = false;

@@ -73,6 +73,7 @@ static void weigh_leads(struct ecg_fuse *fuse)
         ecg_lead_levels(lead, &height, &floor);
         double clarity = clarity_of(height, floor);
         double here = clarity_of((double)lead->height[ECG_AHEAD], (double)lead->floor[ECG_AHEAD]);
+        here = isnan(lead->height[ECG_AHEAD]) ? clarity : here; /* mostly missing: unknown */
         double above = fmin(here, clarity) - NOISE_CLARITY;
         fuse->clarity = fmax(fuse->clarity, clarity);
         fuse->clarity_here = fmax(fuse->clarity_here, here);

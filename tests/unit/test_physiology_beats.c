@@ -374,6 +374,29 @@ Test(beats, leads_stand_in_for_each_other)
     free(ecg);
 }
 
+/* Either lead comes off for a while, in the middle of everything: the other one carries on, and as
+ * one of them was always there, nothing is called a gap. */
+Test(beats, a_lead_that_comes_off_leaves_no_hole)
+{
+    struct ecg *ecg = ecg_new(250, 60, 0.7);
+    float *first = lead_new(ecg, 1, 0.1, 0.02), *second = lead_new(ecg, 0.5, 0.1, 0.02);
+    for (int64_t i = 10 * 250 + 200; i < 23 * 250; i++)
+        first[i] = NAN;
+    for (int64_t i = 31 * 250; i < 45 * 250 + 90; i++)
+        second[i] = NAN;
+    struct trace *traces[] = {trace_of(ecg, first, 0), trace_of(ecg, second, 0)};
+    struct train train = beats_of((const struct trace *const *)traces, 2, 4096);
+    struct score s = score(ecg, &train, 0, 60);
+    cr_expect(s.missed == 0 && s.extra == 0, "missed %zu, extra %zu", s.missed, s.extra);
+    for (size_t i = 0; i < train.count; i++)
+        cr_expect_eq(train.events[i].flags, TRAIN_NORMAL, "at %lld",
+                     (long long)train.events[i].time_ns);
+    train_free(&train);
+    trace_free(traces[0]);
+    trace_free(traces[1]);
+    free(ecg);
+}
+
 /* Cautery for 6 s, twice as high as R: what is found in it is called doubtful, and nothing outside
  * suffers. A second lead that the cautery spares finds them all. */
 Test(beats, a_burst_of_noise_is_doubtful_and_soon_over)
