@@ -58,17 +58,29 @@ static void age_text(int64_t age_ns, char out[VALUE_TEXT_SIZE])
         (void)snprintf(out, VALUE_TEXT_SIZE, "%lld min old", (long long)(seconds / 60));
 }
 
+/* A unit as people read it: UCUM's brackets left out. */
+static void shown_unit(const char *unit, char out[VALUE_TEXT_SIZE])
+{
+    size_t at = 0;
+    for (; *unit && at + 1 < VALUE_TEXT_SIZE; unit++) {
+        if (*unit != '[' && *unit != ']')
+            out[at++] = *unit;
+    }
+    out[at] = '\0';
+}
+
 /* The value under the cursor, its unit, its age, and how it differs from the second cursor's. */
 static void draw_value(const struct review *review, struct canvas *canvas, const struct lane *lane,
                        int row, int end, double span, bool tall)
 {
     struct reading reading = read_cursors(review, lane->trace);
-    char text[VALUE_TEXT_SIZE];
+    char text[VALUE_TEXT_SIZE], unit[VALUE_TEXT_SIZE];
+    shown_unit(lane->trace->unit, unit);
     number_text((double)reading.value, span, 1, text);
     int at = canvas_text(canvas, row, 2, end, INK_STRONG, text);
     /* Where all goes into one row, a difference needs the unit's place. */
     if (tall || review->second_ns == NS_NONE)
-        at = canvas_text(canvas, row, at + 1, end, INK_DIM, lane->trace->unit);
+        at = canvas_text(canvas, row, at + 1, end, INK_DIM, unit);
     int next_row = tall ? row + 1 : row, next = tall ? 2 : at + 1;
     if (review->second_ns != NS_NONE) {
         number_text((double)(reading.value - reading.second), span, 1, text);
@@ -198,7 +210,6 @@ static void draw_upright(struct review *review, struct canvas *canvas, int64_t a
             canvas_put(canvas, row, column, glyph, ink);
         } else if (over) {
             there->ink = (uint8_t)ink;
-            there->reverse = 1;
         }
     }
 }

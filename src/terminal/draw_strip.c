@@ -6,6 +6,9 @@
 
 #include "terminal/review_impl.h"
 
+/* So many marks in a cell of the strip make a full block, unless another cell holds more. */
+enum { FULL_HEIGHT_MARKS = 3 };
+
 static int strip_cell(const struct review *review, int64_t at_ns)
 {
     int64_t span = review->extent_to_ns - review->extent_from_ns;
@@ -43,7 +46,7 @@ static void find_coverage(struct review *review)
 
 static int find_density(struct review *review)
 {
-    int most = 0;
+    int most = FULL_HEIGHT_MARKS;
     memset(review->density, 0, (size_t)review->coverage_cells * sizeof *review->density);
     for (size_t i = 0; i < review->mark_count; i++) {
         if (review->marks[i].state == MARK_REJECTED)
@@ -66,7 +69,7 @@ void draw_strip(struct review *review, struct canvas *canvas)
     int to = strip_cell(review, review->view.from_ns + review->view.span_ns - 1);
     int cursor = strip_cell(review, review->cursor_ns);
     for (int cell = 0; cell < part->columns; cell++) {
-        int level = most > 0 ? (review->density[cell] * 8 + most - 1) / most : 0;
+        int level = (review->density[cell] * 8 + most - 1) / most;
         bool seen = cell >= from && cell <= to;
         if (level > 0)
             canvas_put(canvas, part->row, cell, 0x2580 + (uint32_t)level, INK_MARK);

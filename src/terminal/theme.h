@@ -2,7 +2,8 @@
  * theme.h - what each ink looks like: with 256 colours, with 8, with none.
  *
  * Dark and calm: grey text on near-black, traces in soft colours of their own, only an alarm is
- * loud. Without colours, bars and chosen lines are reversed and alarms are bold and reversed.
+ * loud, and a cursor is a band behind what it crosses. Without colours, bars, chosen lines,
+ * cursors and alarms are reversed.
  */
 #ifndef TERMINAL_THEME_H
 #define TERMINAL_THEME_H
