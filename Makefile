@@ -172,7 +172,13 @@ test: test-packages
 fuzz: fuzzers
 	@tests/fuzz/run $(FUZZ_SECONDS)
 
-bench: build
+BENCHES := $(patsubst tests/bench/%.c,build/bench/%,$(wildcard tests/bench/*.c))
+build/bench/%: tests/bench/%.c $(release_LIB)
+	@mkdir -p $(@D)
+	@$(CC) $(BASE_CFLAGS) $(release_CFLAGS) $^ $(LIBS) -o $@
+-include $(BENCHES:=.d)
+
+bench: build $(BENCHES)
 	@tests/bench/run
 
 layers:
