@@ -41,6 +41,8 @@ static void put_method(const struct export_job *job, const struct export_signal 
     if (signal->trace->times_ns)
         str_putf(out, "; each value holds until the next, %g s at most",
                  s_from_ns(job->recipe->age_ns));
+    else if (signal->trace->rate_hz <= 10 && signal->trace->rate_hz <= job->recipe->rate_hz)
+        str_put(out, "; straight lines between its own samples");
     else
         str_put(out, "; resampled by windowed sinc, anti-aliased");
     if (job->recipe->baseline_mode != BASELINE_NONE)

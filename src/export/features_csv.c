@@ -39,21 +39,31 @@ static int begin(const struct export_job *job, struct outfile *out, struct err *
     return failed;
 }
 
+/* Samples are float: more digits would say nothing. */
+static void put_value(struct str *text, double value)
+{
+    str_putc(text, ',');
+    str_put_float(text, (float)value);
+}
+
 static int window(const struct export_job *job, const struct export_window *window,
                   struct outfile *out, struct err *err)
 {
     struct str text = {0};
     for (size_t i = 0; i < job->recipe->signal_count; i++) {
         const struct features *f = &window->features[i];
-        const double numbers[] = {f->valid_share, f->baseline, f->mean,     f->peak,
-                                  f->peak_s,      f->trough,   f->trough_s, f->area};
         put_row_start(job, window->mark, &text);
         str_putf(&text, ",%s,", job->signals[i].recipe->name);
         str_put_csv(&text, job->signals[i].written);
-        for (size_t k = 0; k < sizeof numbers / sizeof *numbers; k++) {
-            str_putc(&text, ',');
-            str_put_double(&text, numbers[k]);
-        }
+        str_putc(&text, ',');
+        str_put_double(&text, f->valid_share);
+        put_value(&text, f->baseline);
+        put_value(&text, f->mean);
+        put_value(&text, f->peak);
+        put_value(&text, f->peak_s);
+        put_value(&text, f->trough);
+        put_value(&text, f->trough_s);
+        put_value(&text, f->area);
         str_putc(&text, '\n');
     }
     int failed = write_text(out, &text, err);

@@ -10,6 +10,11 @@
 #include "base/ns.h"
 #include "dsp/resample.h"
 
+/* A trace this slow (heart rate, trends) that is not thinned out is drawn straight between
+ * neighbours: the resampler's kernel would reach 16 samples, which here are seconds, to each side,
+ * and one gap would take them all. */
+static const double slow_hz = 10;
+
 struct cutter {
     double rate_hz;
     int64_t age_ns;
@@ -66,16 +71,37 @@ static int use_rate(struct cutter *cutter, double in_rate_hz, struct err *err)
     return ERR_OK;
 }
 
+/* Grid points [first, end) on straight lines between the run's samples; NaN next to one. */
+static int cut_slow(const struct trace *trace, const struct run *run, double position, double step,
+                    int64_t first, int64_t end, float *out, struct err *err)
+{
+    for (int64_t k = first; k < end; k++, position += step) {
+        float pair[2] = {NAN, NAN};
+        int64_t before = (int64_t)floor(position + 1e-6);
+        double share = position - (double)before;
+        bool on_sample = share < 1e-6;
+        if (before < 0 || before + (on_sample ? 1 : 2) > run->count)
+            continue;
+        int failed = trace_read(trace, run->first + before, on_sample ? 1 : 2, pair, err);
+        if (failed)
+            return failed;
+        double rise = (double)pair[1] - (double)pair[0];
+        out[k] = on_sample ? pair[0] : (float)((double)pair[0] + share * rise);
+    }
+    return ERR_OK;
+}
+
 /* The part of the window that lies in one run: grid points [first, end). */
 static int cut_run(struct cutter *cutter, const struct trace *trace, const struct run *run,
                    int64_t start_ns, int64_t first, int64_t end, float *out, struct err *err)
 {
-    double rate_hz = run_rate_hz(run);
+    double rate_hz = run_rate_hz(run), step = rate_hz / cutter->rate_hz;
+    double position = (double)(start_ns - run->start_ns) / 1e9 * rate_hz + (double)first * step;
+    if (rate_hz <= slow_hz && step <= 1 + 1e-9)
+        return cut_slow(trace, run, position, step, first, end, out, err);
     int failed = use_rate(cutter, rate_hz, err);
     if (failed)
         return failed;
-    double step = rate_hz / cutter->rate_hz;
-    double position = (double)(start_ns - run->start_ns) / 1e9 * rate_hz + (double)first * step;
     int64_t reach = resampler_reach_samples(cutter->resampler) + 1;
     int64_t from = (int64_t)floor(position) - reach;
     int64_t to = (int64_t)ceil(position + (double)(end - first) * step) + reach;

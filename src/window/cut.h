@@ -2,7 +2,8 @@
  * cut.h - a stretch of any trace on an even grid: what a window is filled with.
  *
  * Even traces go through a windowed-sinc resampler (dsp/resample.h): anti-aliased on the way down,
- * band-limited on the way up, the samples themselves where rate and grid agree. Step traces give
+ * band-limited on the way up, the samples themselves where rate and grid agree. Slow ones (10
+ * samples a second and fewer) that are not thinned out are drawn straight between samples. Step traces give
  * the value that stands, for as long as `age_ns` allows. NaN: not valid, never made up.
  */
 #ifndef WINDOW_CUT_H
