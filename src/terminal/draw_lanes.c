@@ -8,7 +8,7 @@
 
 #include "terminal/review_impl.h"
 
-enum { DOT_ROWS_PER_CELL = 4 };
+enum { DOT_ROWS_PER_CELL = 4, MARK_LINE = 0x250a, SECOND_LINE = 0x2506, CURSOR_LINE = 0x2502 };
 
 /* ---- the gutter ---- */
 
@@ -17,12 +17,14 @@ static void number_text(double value, double span, int more, char out[VALUE_TEXT
 {
     int digits = span > 0 ? 1 - (int)floor(log10(span)) + more : 2;
     digits = digits < 0 ? 0 : digits > 6 ? 6 : digits;
+    if (fabs(value) < 0.5 * pow(10, -digits))
+        value = 0; /* never "-0.00" */
     if (isnan(value))
         (void)snprintf(out, VALUE_TEXT_SIZE, "--");
     else if (fabs(value) >= 1e7)
         (void)snprintf(out, VALUE_TEXT_SIZE, "%.2e", value);
     else
-        (void)snprintf(out, VALUE_TEXT_SIZE, "%.*f", digits, value == 0 ? 0.0 : value);
+        (void)snprintf(out, VALUE_TEXT_SIZE, "%.*f", digits, value);
 }
 
 static int put_right(struct canvas *canvas, int row, int end, enum ink ink, const char *text)
@@ -69,72 +71,99 @@ static void shown_unit(const char *unit, char out[VALUE_TEXT_SIZE])
     out[at] = '\0';
 }
 
+/* Where a lane's gutter is, and what its scale runs from and to. */
+struct gutter {
+    int row, rows, end; /* end: first column that is not the gutter's text */
+    double low, high;
+    int low_limit; /* column before the bottom's number */
+};
+
 /* The value under the cursor, its unit, its age, and how it differs from the second cursor's. */
 static void draw_value(const struct review *review, struct canvas *canvas, const struct lane *lane,
-                       int row, int end, double span, bool tall)
+                       const struct gutter *gutter)
 {
     struct reading reading = read_cursors(review, lane->trace);
+    double span = gutter->high - gutter->low;
+    bool tall = gutter->rows >= 3, second = review->second_ns != NS_NONE;
+    int row = gutter->row + 1, end = gutter->rows == 2 ? gutter->low_limit : gutter->end;
     char text[VALUE_TEXT_SIZE], unit[VALUE_TEXT_SIZE];
-    shown_unit(lane->trace->unit, unit);
     number_text((double)reading.value, span, 1, text);
+    if (gutter->rows == 1) {
+        (void)put_right(canvas, gutter->row, gutter->end, INK_STRONG, text);
+        return;
+    }
+    shown_unit(lane->trace->unit, unit);
     int at = canvas_text(canvas, row, 2, end, INK_STRONG, text);
     /* Where all goes into one row, a difference needs the unit's place. */
-    if (tall || review->second_ns == NS_NONE)
+    if (tall || !second)
         at = canvas_text(canvas, row, at + 1, end, INK_DIM, unit);
     int next_row = tall ? row + 1 : row, next = tall ? 2 : at + 1;
-    if (review->second_ns != NS_NONE) {
+    int next_end = gutter->rows <= 3 ? gutter->low_limit : gutter->end;
+    if (second) {
         number_text((double)(reading.value - reading.second), span, 1, text);
-        (void)canvas_printf(canvas, next_row, next, end, INK_CURSOR_2, "\u0394%s", text);
+        (void)canvas_printf(canvas, next_row, next, next_end, INK_CURSOR_2, "\u0394%s", text);
     } else if (lane->trace->times_ns && !isnan(reading.value)) {
         age_text(reading.age_ns, text);
-        (void)canvas_text(canvas, next_row, next, end, INK_DIM, text);
+        (void)canvas_text(canvas, next_row, next, next_end, INK_DIM, text);
     }
 }
 
-static void draw_scale(const struct lane *lane, struct canvas *canvas, int row, int rows, int end,
-                       double low, double high)
+/* What is special about how the lane is drawn; "" when nothing is. */
+static enum ink lane_remark(const struct lane *lane, char out[VALUE_TEXT_SIZE])
 {
-    char text[VALUE_TEXT_SIZE + FILTER_TEXT_SIZE];
-    if (rows < 2)
-        return;
-    number_text(low, high - low, 0, text);
-    int limit = put_right(canvas, row + rows - 1, end, INK_DIM, text) - 1;
-    if (rows < 4)
-        return;
     char filter[FILTER_TEXT_SIZE];
     display_filter_text(&lane->filter, filter);
+    out[0] = '\0';
     if (lane->answer.pending)
-        (void)canvas_text(canvas, row + rows - 1, 2, limit, INK_WARN, "computing");
+        (void)snprintf(out, VALUE_TEXT_SIZE, "computing");
+    else if (lane->answer.unfiltered)
+        (void)snprintf(out, VALUE_TEXT_SIZE, "filter off at this zoom");
     else if (*filter)
-        (void)canvas_text(canvas, row + rows - 1, 2, limit, INK_DIM, filter);
+        (void)snprintf(out, VALUE_TEXT_SIZE, "%s", filter);
     else if (lane->fixed)
-        (void)canvas_printf(canvas, row + rows - 1, 2, limit, INK_DIM, "%g/div",
-                            lane->per_division);
+        (void)snprintf(out, VALUE_TEXT_SIZE, "%g/div", lane->per_division);
+    return lane->answer.pending || lane->answer.unfiltered ? INK_WARN : INK_DIM;
+}
+
+/* In the gutter where there is room; over the curve's corner where there is not, because a trace
+ * that is filtered must say so. */
+static void draw_remark(const struct review *review, struct canvas *canvas, const struct lane *lane,
+                        const struct gutter *gutter)
+{
+    char text[VALUE_TEXT_SIZE];
+    enum ink ink = lane_remark(lane, text);
+    int last = gutter->row + gutter->rows - 1, width = (int)strlen(text);
+    bool free = gutter->rows >= 4 ||
+                (gutter->rows == 3 && review->second_ns == NS_NONE && !lane->trace->times_ns);
+    if (free && 2 + width <= gutter->low_limit)
+        (void)canvas_text(canvas, last, 2, gutter->low_limit, ink, text);
+    else if (*text)
+        (void)canvas_printf(canvas, gutter->row,
+                            review->layout.gutter + review->view.cells - width - 3, -1, ink, " %s ",
+                            text);
 }
 
 static void draw_gutter(const struct review *review, struct canvas *canvas, const struct lane *lane,
                         int row, int rows, double low, double high)
 {
-    int end = review->layout.gutter - 1, limit = end;
+    struct gutter gutter = {row, rows, review->layout.gutter - 1, low, high, 0};
     bool focused = lane == &review->lanes[review->focus];
-    char text[VALUE_TEXT_SIZE + 1];
-    if (end < 4)
+    char text[VALUE_TEXT_SIZE + 1] = "=";
+    if (gutter.end < 4)
         return;
+    int limit = gutter.end / 2;
     if (rows >= 2) {
         /* '=' where the gain is set by hand. */
-        text[0] = '=';
         number_text(high, high - low, 0, text + 1);
-        limit = put_right(canvas, row, end, INK_DIM, lane->fixed ? text : text + 1) - 1;
+        limit = put_right(canvas, row, gutter.end, INK_DIM, lane->fixed ? text : text + 1) - 1;
+        number_text(low, high - low, 0, text);
+        gutter.low_limit = put_right(canvas, row + rows - 1, gutter.end, INK_DIM, text) - 1;
     }
     if (focused)
         canvas_put(canvas, row, 0, 0x25b8, INK_STRONG);
-    (void)canvas_text(canvas, row, 1, rows >= 2 ? limit : end / 2, focused ? INK_STRONG : INK_TEXT,
-                      lane->trace->name);
-    draw_scale(lane, canvas, row, rows, end, low, high);
-    if (rows == 1)
-        draw_value(review, canvas, lane, row, end, high - low, false);
-    else
-        draw_value(review, canvas, lane, row + 1, rows == 2 ? limit : end, high - low, rows >= 3);
+    (void)canvas_text(canvas, row, 1, limit, focused ? INK_STRONG : INK_TEXT, lane->trace->name);
+    draw_value(review, canvas, lane, &gutter);
+    draw_remark(review, canvas, lane, &gutter);
 }
 
 /* ---- the curve ---- */
@@ -189,12 +218,11 @@ static void draw_curve(const struct review *review, struct canvas *canvas, const
     int end = left + review->view.cells;
     if (!any)
         (void)canvas_text(canvas, row + rows / 2, left + 2, end, INK_DIM, "nothing recorded here");
-    if (lane->answer.unfiltered)
-        (void)canvas_text(canvas, row, left + 2, end, INK_WARN, " filter off at this zoom ");
 }
 
 /* ---- lines over all traces ---- */
 
+/* Only blank cells and dots are crossed: words stay readable. */
 static void draw_upright(struct review *review, struct canvas *canvas, int64_t at_ns,
                          uint32_t glyph, enum ink ink, bool over)
 {
@@ -206,11 +234,10 @@ static void draw_upright(struct review *review, struct canvas *canvas, int64_t a
     for (int row = part->row; row < part->row + part->rows; row++) {
         struct cell *there = &canvas->cells[row * canvas->columns + column];
         bool braille = (there->glyph & ~0xffu) == 0x2800;
-        if (there->glyph == 0 || (over && !braille)) {
+        if (there->glyph == 0 || (over && there->glyph == MARK_LINE))
             canvas_put(canvas, row, column, glyph, ink);
-        } else if (over) {
+        else if (over && braille)
             there->ink = (uint8_t)ink;
-        }
     }
 }
 
@@ -226,7 +253,7 @@ static void draw_mark_lines(struct review *review, struct canvas *canvas)
         bool chosen = mark->id == review->chosen_id;
         /* Many marks would be a fence in front of the traces. */
         if (chosen || (visible <= view->cells / 6 && mark->state != MARK_REJECTED))
-            draw_upright(review, canvas, mark->onset_ns, 0x250a, chosen ? INK_MARK : INK_DIM,
+            draw_upright(review, canvas, mark->onset_ns, MARK_LINE, chosen ? INK_MARK : INK_DIM,
                          false);
     }
 }
@@ -261,6 +288,6 @@ void draw_lanes(struct review *review, struct canvas *canvas)
                                                  : "no recording attached yet");
     draw_mark_lines(review, canvas);
     if (review->second_ns != NS_NONE)
-        draw_upright(review, canvas, review->second_ns, 0x2506, INK_CURSOR_2, true);
-    draw_upright(review, canvas, review->cursor_ns, 0x2502, INK_CURSOR, true);
+        draw_upright(review, canvas, review->second_ns, SECOND_LINE, INK_CURSOR_2, true);
+    draw_upright(review, canvas, review->cursor_ns, CURSOR_LINE, INK_CURSOR, true);
 }

@@ -77,7 +77,7 @@ void review_reload(struct review *review)
         review_say(review, INK_ALARM, "marks cannot be read: %s", err.text);
     take_extent(review);
     if (review_chosen_index(review) == review->mark_count)
-        review->chosen_id = 0;
+        review_choose_nearest(review);
 }
 
 static int make_lanes(struct review *review, struct err *err)
@@ -116,7 +116,7 @@ int review_new(struct casefile *casefile, struct review **out, struct err *err)
     }
     take_extent(made);
     made->view = (struct view){made->extent_from_ns, first_width_ns, 1};
-    made->cursor_ns = made->extent_from_ns;
+    review_go(made, made->extent_from_ns);
     *out = made;
     return ERR_OK;
 }

@@ -122,6 +122,8 @@ bool review_time_action(struct review *review, enum action action);
 /* Moves the cursor, scrolls so that it is seen, chooses the mark nearest to it. */
 void review_go(struct review *review, int64_t at_ns);
 void review_set_view(struct review *review, int64_t from_ns, int64_t span_ns);
+/* Chooses the mark nearest to the cursor; one already chosen stays so while none is nearer. */
+void review_choose_nearest(struct review *review);
 /* Chooses the mark at an index and goes there. */
 void review_choose(struct review *review, size_t index);
 

@@ -43,8 +43,7 @@ static int64_t distance(const struct review *review, size_t index)
     return llabs(review->marks[index].onset_ns - review->cursor_ns);
 }
 
-/* The mark nearest to the cursor; one already chosen stays so while none is nearer. */
-static void choose_nearest(struct review *review)
+void review_choose_nearest(struct review *review)
 {
     if (review->mark_count == 0) {
         review->chosen_id = 0;
@@ -77,7 +76,7 @@ void review_go(struct review *review, int64_t at_ns)
 {
     review->cursor_ns = clamp(at_ns, review->extent_from_ns, review->extent_to_ns - 1);
     scroll_to_cursor(review);
-    choose_nearest(review);
+    review_choose_nearest(review);
 }
 
 void review_choose(struct review *review, size_t index)
