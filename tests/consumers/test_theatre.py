@@ -13,6 +13,7 @@ import tempfile
 import numpy as np
 
 THEATRE = os.environ["THEATRE"]
+INCISURA = os.environ["INCISURA"]
 FILES = ["S-204-monitor.edf", "S-204-skin.edf", "S-204-head.bdf", "S-204-marks.csv", "truth.csv"]
 failed = False
 
@@ -110,6 +111,25 @@ def check_beats(monitor, truth):
     check(after > before + 5, "incision raises the heart rate", f"{before:.1f} to {after:.1f}")
 
 
+def check_derived_beats(path, truth):
+    """The program's beats against the simulator's, away from cautery, the gap and the ends."""
+    out = subprocess.run([INCISURA, "derive", path, "beats"], capture_output=True, text=True,
+                         check=True).stdout
+    found = np.array([float(row["t_s"]) for row in csv.DictReader(out.splitlines())])
+    beats = np.array([t for t, _ in truth("beat")])
+    rough = [(b - 2, b + d + 2) for b, d in truth("cautery") + truth("gap")]
+
+    def fair(times):
+        inside = (times > 2) & (times < beats[-1] - 2)
+        return times[inside & ~np.any([(times > a) & (times < b) for a, b in rough], axis=0)]
+
+    missed = [t for t in fair(beats) if np.abs(found - t).min() > 0.02]
+    extra = [t for t in fair(found) if np.abs(beats - t).min() > 0.02]
+    check(len(fair(beats)) > 600 and len(missed) + len(extra) <= 2,
+          "beats that the program derives are those of truth, to 20 ms",
+          f"missed {missed[:5]}, extra {extra[:5]}")
+
+
 def check_gap(monitor, truth):
     gap_at, gap_span = truth("gap")[0]
     steps = np.diff(monitor.onsets)
@@ -189,6 +209,7 @@ def main():
               "each device starts at an instant of its own")
         check(monitor.units[:3] == ["mV", "mV", "mm[Hg]"], "units are the trade's")
         check_beats(monitor, truth)
+        check_derived_beats(os.path.join(one, FILES[0]), truth)
         check_gap(monitor, truth)
         check_waves(monitor, truth)
         check_skin(skin, truth)
