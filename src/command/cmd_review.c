@@ -16,21 +16,25 @@ static const struct option_spec review_options[] = {
     {0},
 };
 
-/* For writing when it is a case that can be written, for reading otherwise. */
-static int open_here(const struct arguments *arguments, struct casefile **out, struct err *err)
+/* For writing when it is a case that can be written, for reading otherwise; `why` then says why
+ * it cannot be written. */
+static int open_here(const struct arguments *arguments, struct casefile **out, struct err *why,
+                     struct err *err)
 {
     if (argument_flag(arguments, "read-only"))
         return command_open(arguments, STORE_READ, out, err);
-    int failed = command_open(arguments, STORE_WRITE, out, err);
-    if (!failed || failed == ERR_MEMORY)
-        return failed;
-    struct err why = {0};
-    return command_open(arguments, STORE_READ, out, &why) ? failed : ERR_OK;
+    int failed = command_open(arguments, STORE_WRITE, out, why);
+    if (failed)
+        failed = command_open(arguments, STORE_READ, out, err);
+    /* A recording alone is no case to be written, and the screen says so anyway. */
+    if (!failed && !casefile_store(*out))
+        *why = (struct err){0};
+    return failed;
 }
 
 static int run_review(const struct arguments *arguments)
 {
-    struct err err = {0};
+    struct err err = {0}, why = {0};
     struct casefile *casefile = NULL;
     int64_t at_ns = NS_NONE;
     if (!isatty(STDIN_FILENO) || !isatty(STDOUT_FILENO)) {
@@ -39,13 +43,13 @@ static int run_review(const struct arguments *arguments)
         return command_fail(arguments, &err);
     }
     const char *at = argument(arguments, "at");
-    int failed = open_here(arguments, &casefile, &err);
+    int failed = open_here(arguments, &casefile, &why, &err);
     if (!failed && at)
         failed = casefile_time(casefile, at, &at_ns, &err);
     if (!failed)
         failed = casefile_overviews(casefile, 2, &err);
     if (!failed)
-        failed = review_run(casefile, at_ns, &err);
+        failed = review_run(casefile, at_ns, why.text, &err);
     casefile_close(casefile);
     return failed ? command_fail(arguments, &err) : EXIT_DONE;
 }

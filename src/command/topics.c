@@ -8,6 +8,7 @@
 #include "command/command_impl.h"
 #include "physiology/derivation.h"
 #include "recording/reader.h"
+#include "terminal/actions.h"
 
 static void print_times(FILE *to)
 {
@@ -103,6 +104,19 @@ static void print_recipe(FILE *to)
         to);
 }
 
+static void print_keys(FILE *to)
+{
+    int group = -1;
+    (void)fputs("Keys of the review screen. Letters drop the marks of the case's codebook.\n", to);
+    for (size_t i = 0; action_at(i); i++) {
+        const struct action_entry *entry = action_at(i);
+        if ((int)entry->group != group)
+            (void)fprintf(to, "%s\n", action_group_heading(entry->group));
+        group = (int)entry->group;
+        (void)fprintf(to, "  %-6s %s\n", entry->shown, entry->help);
+    }
+}
+
 const struct topic topics[] = {
     {"times", "how times and spans are written", print_times},
     {"formats", "recordings that can be read", print_formats},
@@ -110,6 +124,7 @@ const struct topic topics[] = {
     {"codebook", "the list of events, and the default one", print_codebook},
     {"derivations", "derived traces and event trains, with parameters and sources",
      print_derivations},
+    {"keys", "keys of the review screen", print_keys},
     {"recipe", "which windows to export", print_recipe},
     {NULL, NULL, NULL},
 };

@@ -282,10 +282,11 @@ void draw_lanes(struct review *review, struct canvas *canvas)
         row += lane_height(review, nth);
     }
     if (lanes_shown(review) == 0 && part->rows > 0)
-        (void)canvas_text(canvas, part->row + part->rows / 2, review->layout.gutter + 2,
-                          part->columns, INK_DIM,
-                          review->lane_count > 0 ? "all traces are hidden: \\ shows them"
-                                                 : "no recording attached yet");
+        (void)canvas_text(
+            canvas, part->row + part->rows / 2, review->layout.gutter + 2, part->columns, INK_DIM,
+            review->lane_count > 0 ? "all traces are hidden: \\ shows them"
+            : casefile_recording_count(review->casefile) > 0 ? "no trace can be shown"
+                                                             : "no recording attached yet");
     draw_mark_lines(review, canvas);
     if (review->second_ns != NS_NONE)
         draw_upright(review, canvas, review->second_ns, SECOND_LINE, INK_CURSOR_2, true);

@@ -97,6 +97,18 @@ static int make_lanes(struct review *review, struct err *err)
     return ERR_OK;
 }
 
+/* A recording that cannot be read leaves its traces out: that must not go unseen. */
+static void say_problems(struct review *review)
+{
+    size_t count = casefile_recording_count(review->casefile);
+    for (size_t i = 0; i < count; i++) {
+        const struct attached *attached = casefile_recording(review->casefile, i);
+        if (*attached->problem)
+            review_say(review, INK_WARN, "recording %zu of %zu cannot be read: %.200s", i + 1,
+                       count, attached->problem);
+    }
+}
+
 int review_new(struct casefile *casefile, struct review **out, struct err *err)
 {
     struct review *made = calloc(1, sizeof *made);
@@ -117,6 +129,7 @@ int review_new(struct casefile *casefile, struct review **out, struct err *err)
     take_extent(made);
     made->view = (struct view){made->extent_from_ns, first_width_ns, 1};
     review_go(made, made->extent_from_ns);
+    say_problems(made);
     *out = made;
     return ERR_OK;
 }
@@ -191,6 +204,11 @@ void review_look(struct review *review, int64_t at_ns, int64_t width_ns, bool ce
     int64_t width = width_ns > 0 ? width_ns : review->view.span_ns;
     review_set_view(review, centred ? at_ns - width / 2 : at_ns, width);
     review_go(review, at_ns);
+}
+
+void review_remark(struct review *review, const char *text)
+{
+    review_say(review, INK_WARN, "%s", text);
 }
 
 void review_action(struct review *review, enum action action)

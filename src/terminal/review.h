@@ -35,6 +35,9 @@ MUST_CHECK int review_resize(struct review *review, int rows, int columns, struc
  * case holds. width_ns 0 keeps the width. */
 void review_look(struct review *review, int64_t at_ns, int64_t width_ns, bool centred);
 
+/* Says something in the last line, until the next key. */
+void review_remark(struct review *review, const char *text);
+
 /* What happened: a key or the mouse. */
 void review_key(struct review *review, const struct event *event);
 void review_action(struct review *review, enum action action);
@@ -56,7 +59,9 @@ bool review_waits(const struct review *review);
 /* Draws into a canvas of the size given to review_resize(). */
 void review_draw(struct review *review, struct canvas *canvas);
 
-/* The session: the case on the terminal, until left. at_ns NS_NONE = from the start. */
-MUST_CHECK int review_run(struct casefile *casefile, int64_t at_ns, struct err *err);
+/* The session: the case on the terminal, until left. at_ns NS_NONE = from the start. `remark` is
+ * said first; "" = nothing. */
+MUST_CHECK int review_run(struct casefile *casefile, int64_t at_ns, const char *remark,
+                          struct err *err);
 
 #endif

@@ -66,7 +66,7 @@ static int loop(struct session *session, struct review *review, struct canvas *c
     return failed;
 }
 
-int review_run(struct casefile *casefile, int64_t at_ns, struct err *err)
+int review_run(struct casefile *casefile, int64_t at_ns, const char *remark, struct err *err)
 {
     struct review *review = NULL;
     struct session *session = NULL;
@@ -78,6 +78,8 @@ int review_run(struct casefile *casefile, int64_t at_ns, struct err *err)
         failed = resize(session, review, &canvas, err);
     if (!failed && at_ns != NS_NONE)
         review_look(review, at_ns, 0, true);
+    if (!failed && *remark)
+        review_remark(review, remark);
     if (!failed)
         failed = loop(session, review, &canvas, err);
     session_close(session);

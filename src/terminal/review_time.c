@@ -138,10 +138,8 @@ static void zoom(struct review *review, bool in)
 
 enum { ANY, SAME_CODE, SAME_STATE };
 
-static bool fits(const struct review *review, size_t index, int what)
+static bool fits(const struct mark *mark, const struct mark *chosen, int what)
 {
-    const struct mark *mark = &review->marks[index];
-    const struct mark *chosen = &review->marks[review_chosen_index(review)];
     if (what == SAME_CODE)
         return strcmp(mark->code, chosen->code) == 0;
     return what == ANY || mark->state == chosen->state;
@@ -157,7 +155,7 @@ static void step_mark(struct review *review, bool on, int what)
         int64_t onset = review->marks[i].onset_ns;
         bool beyond = on ? (here ? i > chosen : onset > review->cursor_ns)
                          : (here ? i < chosen : onset < review->cursor_ns);
-        if (beyond && fits(review, i, what)) {
+        if (beyond && fits(&review->marks[i], &review->marks[chosen], what)) {
             review_choose(review, i);
             return;
         }

@@ -277,7 +277,29 @@ Test(review, a_case_for_reading_says_so_and_changes_nothing)
     review_case_close(&made);
 }
 
-/* The file is locked by another writer: the mark must be kept, shown and saved later. */
+Test(review, a_recording_that_is_gone_is_told_and_the_marks_stay)
+{
+    struct review_case made;
+    char path[128];
+    review_case_open(&made, STORE_WRITE);
+    review_case_type(&made, ">i");
+    review_free(made.review);
+    casefile_close(made.casefile);
+    (void)snprintf(path, sizeof path, "%s/a.edf", made.folder);
+    cr_assert_eq(remove(path), 0);
+    (void)snprintf(path, sizeof path, "%s/S-1.case", made.folder);
+    cr_assert_eq(casefile_open(path, STORE_WRITE, NULL, NULL, &made.casefile, NULL), 0);
+    cr_assert_eq(review_new(made.casefile, &made.review, NULL), 0);
+    review_case_size(&made, 24, 80);
+    cr_expect(review_case_shows(&made, "recording 1 of 1 cannot be read"));
+    cr_expect(review_case_shows(&made, "no trace can be shown"));
+    cr_expect(review_case_shows(&made, "incision"));
+    review_case_press(&made, KEY_IS_DOWN);
+    cr_expect(review_case_shows(&made, "no trace is shown"));
+    review_case_close(&made);
+}
+
+/* A trigger stands in for a full disk: the mark must be kept, shown and saved later. */
 Test(review, a_mark_that_cannot_be_saved_is_kept_and_tried_again)
 {
     struct review_case made;
