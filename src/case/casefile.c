@@ -265,7 +265,7 @@ static int attach_stored(struct casefile *casefile, struct loaded *loaded, const
                                       .start_civil_ns = loaded->attached.info->start_civil_ns};
     int failed = absolute ? options_text(options, &text, err) : err_errno(err, path, "find it");
     if (!failed)
-        failed = file_state(path, &stored.size, &stored.modified_ns, err);
+        failed = recording_state(path, &stored.size, &stored.modified_ns, err);
     if (!failed) {
         stored.options = str_text(&text);
         memcpy(stored.digest, loaded->digest, sizeof stored.digest);
@@ -298,7 +298,7 @@ int casefile_attach(struct casefile *casefile, const char *path,
     if (!casefile->store)
         return err_set(err, ERR_USAGE, "%s: a bare recording takes no attachment; start a case",
                        casefile->path);
-    int failed = digest_file(path, progress, digest, err);
+    int failed = recording_digest(path, progress, digest, err);
     if (failed)
         return failed;
     struct loaded *loaded = loaded_new(0, digest);

@@ -43,8 +43,13 @@ struct casefile {
 MUST_CHECK int locate_recording(struct casefile *casefile, const struct stored_recording *stored,
                                 char **path, struct err *err);
 
-/* Size and time of last change of a file. */
-MUST_CHECK int file_state(const char *path, int64_t *size, int64_t *modified_ns, struct err *err);
+/* Size and time of last change of a recording: of all its files together, and of the latest. */
+MUST_CHECK int recording_state(const char *path, int64_t *size, int64_t *modified_ns,
+                               struct err *err);
+
+/* BLAKE2b-256 of its file; of the digests of all its files, in order, when it has several. */
+MUST_CHECK int recording_digest(const char *path, struct progress *progress,
+                                char out[DIGEST_TEXT_SIZE], struct err *err);
 
 /* Reader options as the store keeps them, one "name=value" a line, and back. The lists that
  * options_parse() makes live in `arena`. */

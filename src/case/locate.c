@@ -10,14 +10,64 @@
 
 #include "case/casefile_impl.h"
 
-int file_state(const char *path, int64_t *size, int64_t *modified_ns, struct err *err)
+static int file_state(const char *path, int64_t *size, int64_t *modified_ns, struct err *err)
 {
     struct stat stat_now;
     if (stat(path, &stat_now) < 0)
         return err_errno(err, path, "find it");
-    *size = stat_now.st_size;
-    *modified_ns = (int64_t)stat_now.st_mtim.tv_sec * NS_PER_S + stat_now.st_mtim.tv_nsec;
+    int64_t changed = (int64_t)stat_now.st_mtim.tv_sec * NS_PER_S + stat_now.st_mtim.tv_nsec;
+    *size += stat_now.st_size;
+    *modified_ns = changed > *modified_ns ? changed : *modified_ns;
     return ERR_OK;
+}
+
+/* A WFDB header names further files; everything else is one file. *out is NULL for those. */
+static int open_parts(const char *path, struct recording **out, struct err *err)
+{
+    static const struct reader_options no_options = {0};
+    *out = NULL;
+    return path_has_suffix(path, ".hea") ? recording_open(path, &no_options, out, err) : ERR_OK;
+}
+
+int recording_state(const char *path, int64_t *size, int64_t *modified_ns, struct err *err)
+{
+    struct recording *recording;
+    *size = 0;
+    *modified_ns = INT64_MIN;
+    int failed = file_state(path, size, modified_ns, err);
+    if (!failed)
+        failed = open_parts(path, &recording, err);
+    if (failed || !recording)
+        return failed;
+    const struct recording_info *info = recording_info(recording);
+    for (size_t i = 0; i < info->part_count && !failed; i++)
+        failed = file_state(info->parts[i], size, modified_ns, err);
+    recording_close(recording);
+    return failed;
+}
+
+int recording_digest(const char *path, struct progress *progress, char out[DIGEST_TEXT_SIZE],
+                     struct err *err)
+{
+    struct recording *recording;
+    int failed = digest_file(path, progress, out, err);
+    if (!failed)
+        failed = open_parts(path, &recording, err);
+    if (failed || !recording)
+        return failed;
+    const struct recording_info *info = recording_info(recording);
+    struct digester digester;
+    uint8_t digest[DIGEST_SIZE];
+    digester_begin(&digester);
+    digester_add(&digester, out, DIGEST_TEXT_SIZE);
+    for (size_t i = 0; i < info->part_count && !failed; i++) {
+        failed = digest_file(info->parts[i], progress, out, err);
+        digester_add(&digester, out, DIGEST_TEXT_SIZE);
+    }
+    digester_end(&digester, digest);
+    recording_close(recording);
+    digest_text(digest, out);
+    return failed;
 }
 
 /* Is the file at `path` the stored one? The store is told where and when it was seen. */
@@ -26,11 +76,11 @@ static bool is_it(struct casefile *casefile, const struct stored_recording *stor
 {
     int64_t size = 0, modified_ns = 0;
     char digest[DIGEST_TEXT_SIZE];
-    if (file_state(path, &size, &modified_ns, NULL) || size != stored->size)
+    if (recording_state(path, &size, &modified_ns, NULL) || size != stored->size)
         return false;
     if (modified_ns == stored->modified_ns && strcmp(path, stored->path) == 0)
         return true;
-    if (digest_file(path, NULL, digest, NULL) || strcmp(digest, stored->digest) != 0)
+    if (recording_digest(path, NULL, digest, NULL) || strcmp(digest, stored->digest) != 0)
         return false;
     /* Only saves the next opening a digest; where it cannot be kept, it is taken again. */
     int kept = !store_writable(casefile->store) ||
@@ -73,7 +123,7 @@ int locate_recording(struct casefile *casefile, const struct stored_recording *s
         *path = found;
         return ERR_OK;
     }
-    if (file_state(stored->path, &size, &modified_ns, NULL) == ERR_OK)
+    if (recording_state(stored->path, &size, &modified_ns, NULL) == ERR_OK)
         return err_set(err, ERR_CONFLICT,
                        "%s: changed since it was attached (its digest differs); put the original "
                        "back, or attach the new file as another recording",

@@ -5,5 +5,6 @@
 
 extern const struct reader csv_reader;
 extern const struct reader edf_reader;
+extern const struct reader wfdb_reader;
 
-const struct reader *const readers[] = {&edf_reader, &csv_reader, NULL};
+const struct reader *const readers[] = {&edf_reader, &wfdb_reader, &csv_reader, NULL};

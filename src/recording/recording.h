@@ -66,6 +66,8 @@ struct recording_info {
     size_t gap_count;
     const struct annotation *annotations; /* in onset order */
     size_t annotation_count;
+    const char *const *parts; /* paths of further files its samples live in; WFDB alone has any */
+    size_t part_count;
     const char *const *notes; /* oddities met and how they were taken, one line each */
     size_t note_count;
 };
