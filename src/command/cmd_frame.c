@@ -108,7 +108,7 @@ static int run_frame(const struct arguments *arguments)
     struct casefile *casefile = NULL;
     struct review *review = NULL;
     struct canvas canvas = {0};
-    struct frame_request request;
+    struct frame_request request = {0};
     int failed = command_open(arguments, STORE_READ, &casefile, &err);
     if (!failed)
         failed = read_request(arguments, casefile, &request, &err);

@@ -26,7 +26,7 @@ static void put_line(struct pen *pen, const char *key, enum ink key_ink, const c
     int row = 1 + rest % pen->rows, column = 1 + rest / pen->rows * ENTRY_COLUMNS;
     int end = column + ENTRY_COLUMNS - 1;
     (void)canvas_text(pen->canvas, row, column, end, key_ink, key);
-    (void)canvas_text(pen->canvas, row, key ? column + KEY_COLUMNS : column, end, ink, text);
+    (void)canvas_text(pen->canvas, row, column + KEY_COLUMNS, end, ink, text);
 }
 
 static void put_heading(struct pen *pen, const char *text)

@@ -18,20 +18,9 @@ static void draw_bar(struct canvas *canvas, const struct part *part)
  * is there. That a finished one could not be kept on disk only costs time at the next opening. */
 static void overview_text(const struct review *review, char *out, size_t size)
 {
-    int64_t done = 0, total = 0;
+    int64_t done, total;
     struct err failure = {0};
-    for (size_t i = 0; i < casefile_recording_count(review->casefile); i++) {
-        const struct attached *attached = casefile_recording(review->casefile, i);
-        int64_t part = 0, whole = 0;
-        struct err why = {0};
-        if (!attached->overview)
-            continue;
-        overview_progress(attached->overview, &part, &whole, &why);
-        if (why.code && part < whole)
-            failure = why;
-        done += part;
-        total += whole;
-    }
+    review_overviews(review, &done, &total, &failure);
     out[0] = '\0';
     if (failure.code)
         (void)snprintf(out, size, "overview stopped: %.60s", failure.text);

@@ -56,9 +56,7 @@ void draw_list(const struct review *review, struct canvas *canvas)
         entries.columns--;
     }
     size_t room = (size_t)entries.rows;
-    size_t first = chosen < count && chosen > room / 2 ? chosen - room / 2 : 0;
-    if (first + room > count)
-        first = count > room ? count - room : 0;
+    size_t first = list_first(review);
     for (size_t i = 0; i < room && first + i < count; i++)
         draw_entry(review, canvas, &entries, entries.row + (int)i, first + i);
 }

@@ -233,9 +233,32 @@ void review_action(struct review *review, enum action action)
     (void)review_mark_action(review, action);
 }
 
+void review_overviews(const struct review *review, int64_t *done, int64_t *total,
+                      struct err *failure)
+{
+    *done = *total = 0;
+    for (size_t i = 0; i < casefile_recording_count(review->casefile); i++) {
+        const struct attached *attached = casefile_recording(review->casefile, i);
+        int64_t part = 0, whole = 0;
+        struct err why = {0};
+        if (!attached->overview)
+            continue;
+        overview_progress(attached->overview, &part, &whole, &why);
+        if (why.code && part < whole)
+            *failure = why;
+        *done += part;
+        *total += whole;
+    }
+}
+
 bool review_tick(struct review *review)
 {
-    bool changed = false;
+    int64_t done, total;
+    struct err failure = {0};
+    review_overviews(review, &done, &total, &failure);
+    /* Progress is on screen, and so is that it is over. */
+    bool changed = done != review->overview_done;
+    review->overview_done = done;
     if (review->unsaved_count > 0) {
         review_retry(review);
         changed = true;

@@ -39,9 +39,11 @@ static void last_value(const struct review *review, size_t index, char out[VALUE
         mark_value_text(best, out);
 }
 
+/* With as many decimals as it takes to read the same instant back: Enter alone changes nothing. */
 static void offer_time(const struct review *review, int64_t at_ns, char out[TIME_TEXT_SIZE])
 {
-    review_clock_text(review, at_ns, 3, out);
+    int decimals = at_ns % NS_PER_MS == 0 ? 3 : at_ns % NS_PER_US == 0 ? 6 : 9;
+    review_clock_text(review, at_ns, decimals, out);
 }
 
 static void offer(const struct review *review, enum asking asking, size_t index, char *out,
@@ -55,7 +57,7 @@ static void offer(const struct review *review, enum asking asking, size_t index,
     else if (asking == ASK_UNTIL && mark)
         offer_time(review, mark->until_ns == NS_NONE ? review->cursor_ns : mark->until_ns, text);
     else if (asking == ASK_GO_TO)
-        offer_time(review, review->cursor_ns, text);
+        review_clock_text(review, review->cursor_ns, 3, text);
     else if (asking == ASK_VALUE && mark && mark->has_value)
         mark_value_text(mark, value);
     else if (asking == ASK_VALUE && mark)

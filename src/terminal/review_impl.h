@@ -59,7 +59,8 @@ struct review {
     size_t first_lane; /* number, among lanes shown, of the topmost on screen */
     int lane_rows;     /* height by hand; 0 = automatic */
     struct column_room room;
-    bool waits;
+    bool waits;            /* what was drawn last waits for an overview */
+    int64_t overview_done; /* at the last tick */
     uint8_t *coverage; /* shape (coverage_cells): is anything recorded in a cell of the strip? */
     int *density;      /* shape (coverage_cells): marks in it */
     int coverage_cells;
@@ -94,6 +95,9 @@ bool review_writable(const struct review *review);
 /* Fetches the marks again; says so when that fails. After every call that may change the store,
  * even one that failed: the list fetched before is no longer valid. */
 void review_reload(struct review *review);
+/* How far all overviews are; *failure is set when one stopped before its end. */
+void review_overviews(const struct review *review, int64_t *done, int64_t *total,
+                      struct err *failure);
 /* Index of the chosen mark; mark_count when there is none. */
 size_t review_chosen_index(const struct review *review);
 const char *mark_label(const struct review *review, size_t index);
@@ -116,6 +120,9 @@ void review_scroll_lanes(struct review *review);
 /* Rows of the nth lane on screen (0 = topmost); how many there is room for. */
 size_t lanes_on_screen(const struct review *review);
 int lane_height(const struct review *review, size_t nth);
+
+/* Index of the mark in the list's first row. */
+size_t list_first(const struct review *review);
 
 /* ---- review_time.c ---- */
 bool review_time_action(struct review *review, enum action action);

@@ -44,6 +44,19 @@ static void letter(struct review *review, uint32_t key)
     review_say(review, INK_WARN, "no code has the key '%s'; ? shows those that do", text);
 }
 
+static bool inside(const struct part *part, const struct event *event)
+{
+    return event->row >= part->row && event->row < part->row + part->rows &&
+           event->column >= part->column && event->column < part->column + part->columns;
+}
+
+static void press_list(struct review *review, const struct event *event)
+{
+    size_t index = list_first(review) + (size_t)(event->row - review->layout.list.row) - 1;
+    if (event->row > review->layout.list.row && index < review->mark_count)
+        review_choose(review, index);
+}
+
 static void mouse_event(struct review *review, const struct event *event)
 {
     const struct layout *layout = &review->layout;
@@ -53,7 +66,9 @@ static void mouse_event(struct review *review, const struct event *event)
         return;
     }
     int cell = event->column - layout->gutter;
-    if (event->row >= layout->strip.row && event->row < layout->strip.row + layout->strip.rows)
+    if (inside(&layout->list, event))
+        press_list(review, event);
+    else if (inside(&layout->strip, event))
         review_go(review, review->extent_from_ns +
                               mul_div(event->column, review->extent_to_ns - review->extent_from_ns,
                                       layout->strip.columns));
@@ -82,7 +97,7 @@ void review_key(struct review *review, const struct event *event)
 {
     if (review->prompt.open)
         prompt_event(review, event);
-    else if (event->kind == EVENT_MOUSE)
+    else if (event->kind == EVENT_MOUSE && !review->help_open)
         mouse_event(review, event);
     else if (event->kind == EVENT_KEY && review->help_open)
         help_event(review, event);

@@ -137,3 +137,15 @@ int lane_height(const struct review *review, size_t nth)
         return review->lane_rows < rows ? review->lane_rows : rows;
     return rows / on_screen + ((int)nth < rows % on_screen ? 1 : 0);
 }
+
+/* The chosen mark stays in the middle, except near the ends. */
+size_t list_first(const struct review *review)
+{
+    int rows = review->layout.list.rows;
+    size_t chosen = review_chosen_index(review), count = review->mark_count;
+    size_t room = rows > 1 ? (size_t)rows - 1 : 0;
+    size_t first = chosen < count && chosen > room / 2 ? chosen - room / 2 : 0;
+    if (first + room > count)
+        first = count > room ? count - room : 0;
+    return first;
+}

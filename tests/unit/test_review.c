@@ -189,6 +189,44 @@ Test(review, marks_are_moved_noted_confirmed_rejected_and_all_of_it_undone)
     review_case_close(&made);
 }
 
+Test(review, enter_on_an_offered_time_changes_nothing)
+{
+    struct review_case made;
+    const struct mark *marks;
+    review_case_open(&made, STORE_WRITE);
+    review_case_press(&made, KEY_IS_RIGHT);
+    review_case_type(&made, "i");
+    review_case_marks(&made, &marks);
+    int64_t onset = marks[0].onset_ns;
+    cr_assert_neq(onset % NS_PER_MS, 0, "a column does not begin on a millisecond");
+    review_case_press(&made, KEY_IS_F(2));
+    review_case_press(&made, KEY_IS_ENTER);
+    review_case_marks(&made, &marks);
+    cr_expect_eq(marks[0].onset_ns, onset);
+    review_case_close(&made);
+}
+
+Test(review, the_mouse_points_and_its_wheel_zooms)
+{
+    struct review_case made;
+    review_case_open(&made, STORE_WRITE);
+    review_case_type(&made, ">i>>>c");
+    struct event press = {.kind = EVENT_MOUSE, .mouse = MOUSE_PRESS, .row = 9, .column = 18 + 31};
+    review_key(made.review, &press);
+    cr_expect_float_eq(s_from_ns(review_cursor(made.review)), 5.08, 0.09, "half way across 10 s");
+    press.row = 18;
+    review_key(made.review, &press);
+    cr_expect_eq(review_cursor(made.review), NS_PER_S, "the list's first mark");
+    press.row = 1;
+    press.column = 40;
+    review_key(made.review, &press);
+    cr_expect_eq(review_cursor(made.review), 30 * NS_PER_S, "half way along the strip");
+    press.mouse = MOUSE_WHEEL_UP;
+    review_key(made.review, &press);
+    cr_expect(review_case_shows(&made, "5.000 s shown"));
+    review_case_close(&made);
+}
+
 Test(review, steps_go_from_mark_to_mark)
 {
     struct review_case made;
