@@ -1,6 +1,6 @@
 /*
  * test_painter.c - what the painter sends, given to an independent terminal (libvterm), must make
- * the canvas; and canvas printing.
+ * the canvas, colours and all.
  */
 #include <criterion/criterion.h>
 
@@ -116,20 +116,4 @@ Test(painter, plain_terminals_get_plain_characters)
     str_free(&bytes);
     canvas_free(&canvas);
     painter_fini(&painter);
-}
-
-Test(painter, canvas_clips_cuts_and_prints)
-{
-    struct canvas canvas = {0};
-    struct str text = {0};
-    cr_assert_eq(canvas_resize(&canvas, 3, 10, NULL), 0);
-    canvas_put(&canvas, -1, 0, 'x', INK_TEXT);
-    canvas_put(&canvas, 0, 10, 'x', INK_TEXT);
-    canvas_fill(&canvas, 2, 8, 5, 5, '#', INK_TEXT);
-    cr_expect_eq(canvas_text(&canvas, 0, 0, 6, INK_TEXT, "abcdefgh"), 6);
-    cr_expect_eq(canvas_text(&canvas, 1, 0, -1, INK_TEXT, "\u4e2d\x01 \u00e9"), 4);
-    canvas_print(&canvas, false, &text);
-    cr_expect_str_eq(str_text(&text), "abcde\u2026\n?. \u00e9\n        ##\n");
-    str_free(&text);
-    canvas_free(&canvas);
 }
