@@ -8,7 +8,13 @@
 
 #include "terminal/review_impl.h"
 
-enum { DOT_ROWS_PER_CELL = 4, MARK_LINE = 0x250a, SECOND_LINE = 0x2506, CURSOR_LINE = 0x2502 };
+enum {
+    NARROW = 14,
+    DOT_ROWS_PER_CELL = 4,
+    MARK_LINE = 0x250a,
+    SECOND_LINE = 0x2506,
+    CURSOR_LINE = 0x2502
+};
 
 /* ---- the gutter ---- */
 
@@ -152,7 +158,10 @@ static void draw_gutter(const struct review *review, struct canvas *canvas, cons
     if (gutter.end < 4)
         return;
     int limit = gutter.end / 2;
-    if (rows >= 2) {
+    /* Two rows of a narrow gutter hold name and value, and no scale. */
+    if (rows == 2 && gutter.end < NARROW) {
+        limit = gutter.low_limit = gutter.end;
+    } else if (rows >= 2) {
         /* '=' where the gain is set by hand. */
         number_text(high, high - low, 0, text + 1);
         limit = put_right(canvas, row, gutter.end, INK_DIM, lane->fixed ? text : text + 1) - 1;

@@ -95,16 +95,11 @@ static void draw_title(const struct review *review, struct canvas *canvas)
         canvas_text(canvas, part->row, 1, part->columns, INK_BAR, casefile_name(review->casefile));
     for (int i = 1; i < at; i++)
         canvas->cells[part->row * canvas->columns + i].bold = 1;
-    int name_end = at;
-    if (review->store) {
-        const struct case_header *header = store_header(review->store);
-        at = canvas_printf(canvas, part->row, at + 2, part->columns, INK_BAR, "%s",
-                           header->procedure);
-    } else {
-        at = canvas_text(canvas, part->row, at + 2, part->columns, INK_BAR, "recording, no case");
-    }
-    if (part->columns < 60)
-        at = name_end;
+    /* On a narrow screen what may be wrong comes before what the case is about. */
+    if (part->columns >= 60)
+        at = canvas_text(canvas, part->row, at + 2, part->columns, INK_BAR,
+                         review->store ? store_header(review->store)->procedure
+                                       : "recording, no case");
     draw_title_right(review, canvas, at + 2);
 }
 
