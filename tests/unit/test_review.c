@@ -410,3 +410,33 @@ Test(review, every_key_of_the_table_does_something_or_says_why_not)
         review_case_close(&made);
     }
 }
+
+/* Any key after any other, at any size, drawn each time: nothing breaks, and the history holds. */
+Test(review, any_keys_in_any_order_leave_a_sound_case)
+{
+    struct review_case made;
+    unsigned seed = 12;
+    int64_t rows, bad;
+    char head[DIGEST_TEXT_SIZE];
+    struct err err = {0};
+    review_case_open(&made, STORE_WRITE);
+    for (int i = 0; i < 12000; i++) {
+        seed = seed * 1103515245u + 12345u;
+        unsigned roll = seed >> 16;
+        if (roll % 97 == 0)
+            review_case_size(&made, 1 + (int)(roll / 97 % 70), 1 + (int)(roll / 7 % 210));
+        else if (roll % 13 == 0)
+            review_case_press(&made, KEY_IS_ESCAPE); /* out of the line being typed */
+        else if (roll % 3 == 0)
+            review_case_press(&made, KEY_IS_LEFT + roll / 3 % (KEY_IS_LAST - KEY_IS_LEFT + 1));
+        else
+            review_case_press(&made, roll / 3 % 128);
+        if (i % 50 == 0)
+            (void)review_tick(made.review);
+        review_draw(made.review, &made.canvas);
+    }
+    cr_expect_eq(store_verify(casefile_store(made.casefile), &rows, &bad, head, &err), 0, "%s",
+                 err.text);
+    cr_expect_gt(rows, 100, "%lld changes were made", (long long)rows);
+    review_case_close(&made);
+}
