@@ -49,6 +49,9 @@ void review_mark(struct review *review, const struct code *code);
  * true when the screen may look different now. */
 bool review_tick(struct review *review);
 
+/* Tries once more to save what is not saved; an error names the marks that are lost otherwise. */
+MUST_CHECK int review_leave(struct review *review, struct err *err);
+
 bool review_done(const struct review *review); /* asked to leave, and nothing is unsaved */
 bool review_repaint(struct review *review);    /* asked for a fresh painting, once */
 int64_t review_cursor(const struct review *review);

@@ -1,8 +1,8 @@
 /*
  * review_layout.c - what goes where, for every size of screen. Draws nothing.
  *
- * Small screens lose parts in this order: list, strip, rail's second row, axis, title. What stays
- * to the last is the line that reads the cursor.
+ * Small screens lose parts in this order: the list, the strip, the rail, the axis, the title, the
+ * line of the chosen mark. What stays to the last is the line that reads the cursor.
  */
 #include "terminal/review_impl.h"
 

@@ -56,6 +56,24 @@ void review_retry(struct review *review)
     review_say(review, INK_GOOD, "saved late: %zu mark%s", saved, saved == 1 ? "" : "s");
 }
 
+int review_leave(struct review *review, struct err *err)
+{
+    struct str list = {0};
+    if (review->unsaved_count > 0)
+        review_retry(review);
+    if (review->unsaved_count == 0)
+        return ERR_OK;
+    for (size_t i = 0; i < review->unsaved_count; i++) {
+        char at[TIME_TEXT_SIZE];
+        ns_format_elapsed(review->unsaved[i].onset_ns, 3, at);
+        str_putf(&list, "%s%s at %s", i > 0 ? ", " : "", review->unsaved[i].code, at);
+    }
+    (void)err_set(err, ERR_IO, "%zu NOT SAVED (%.100s); write down: %s", review->unsaved_count,
+                  review->unsaved_why, str_text(&list));
+    str_free(&list);
+    return ERR_IO;
+}
+
 static bool change(struct review *review, const struct mark *mark, const char *said)
 {
     struct err err = {0};

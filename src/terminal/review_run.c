@@ -83,6 +83,8 @@ int review_run(struct casefile *casefile, int64_t at_ns, const char *remark, str
     if (!failed)
         failed = loop(session, review, &canvas, err);
     session_close(session);
+    if (review && !failed)
+        failed = review_leave(review, err);
     canvas_free(&canvas);
     review_free(review);
     return failed;

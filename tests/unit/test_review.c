@@ -359,12 +359,16 @@ Test(review, a_mark_that_cannot_be_saved_is_kept_and_tried_again)
     cr_expect_not(review_done(made.review), "one does not leave by accident");
     (void)review_tick(made.review);
     cr_expect(review_case_shows(&made, "NOT SAVED 1"));
+    struct err err = {0};
+    cr_expect_eq(review_leave(made.review, &err), ERR_IO, "told again when the program ends");
+    cr_expect(strstr(err.text, "incision at +00:00:01.000"), "%s", err.text);
     (void)snprintf(sql, sizeof sql, "sqlite3 %s 'DROP TRIGGER full'", path);
     cr_assert_eq(system(sql), 0);
     cr_expect(review_tick(made.review));
     cr_assert_eq(review_case_marks(&made, &marks), 1);
     cr_expect_eq(marks[0].onset_ns, NS_PER_S);
     cr_expect(review_case_shows(&made, "1 mark  SAVED"));
+    cr_expect_eq(review_leave(made.review, &err), 0);
     review_case_press(&made, KEY_IS_CTRL('q'));
     cr_expect(review_done(made.review));
     review_case_close(&made);
