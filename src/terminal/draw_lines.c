@@ -229,19 +229,17 @@ static void draw_mark(const struct review *review, struct canvas *canvas)
         (void)canvas_text(canvas, row, at + 2, end, INK_DIM, elapsed);
 }
 
+/* Each fits into 78 columns. */
 static const char *hint(const struct review *review)
 {
     size_t index = review_chosen_index(review);
     if (!review_writable(review))
-        return "arrows move   + - zoom   0 all   Space second cursor   * / gain   ? all keys   "
-               "^Q leave";
+        return "arrows move   + - zoom   0 all   Space measure   * / gain   ? keys   ^Q leave";
     if (!review->met_keys)
         return "letters drop marks at the cursor, arrows move it, + - zoom; ? shows every key";
     if (index < review->mark_count && review->marks[index].state == MARK_INCOMPLETE)
-        return "letters mark   Enter complete   Del reject   ; : nudge   [ ] step   Bksp undo   "
-               "? keys";
-    return "letters mark   ! confirm   Del reject   ; : nudge   [ ] step   Bksp undo   ? keys   "
-           "^Q leave";
+        return "letters mark  Enter complete  Del reject  ; : nudge  [ ] step  Bksp undo  ?";
+    return "letters mark  ! confirm  Del reject  ; : nudge  [ ] step  Bksp undo  ? keys";
 }
 
 static void draw_hint(const struct review *review, struct canvas *canvas)
