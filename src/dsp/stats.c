@@ -46,7 +46,7 @@ double select_kth(double *values, size_t count, size_t k)
 double median(double *values, size_t count)
 {
     if (count == 0)
-        return NAN;
+        return (double)NAN;
     double upper = select_kth(values, count, count / 2);
     if (count % 2 == 1)
         return upper;
@@ -59,7 +59,7 @@ double median(double *values, size_t count)
 double quantile(double *values, size_t count, double share)
 {
     if (count == 0)
-        return NAN;
+        return (double)NAN;
     double at = share * (double)(count - 1);
     size_t k = (size_t)at;
     double low = select_kth(values, count, k);
