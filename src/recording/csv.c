@@ -87,8 +87,20 @@ static bool fits(const struct csv_columns *columns, size_t from, size_t end, dou
     return true;
 }
 
+/* How finely the times around row `end` are written: the greatest power of ten, in ns, that divides
+ * a few of them. */
+static double resolution_ns(const struct csv_columns *columns, size_t from, size_t end)
+{
+    int64_t power = NS_PER_S;
+    for (size_t i = end - from > 16 ? end - 16 : from; i < end; i++) {
+        while (power > 1 && columns->times_ns[i] % power != 0)
+            power /= 10;
+    }
+    return (double)power;
+}
+
 /* The period over the longest stretch, snapped to a whole rate or a whole period when the end of
- * that stretch then still lies within half a step of its time. */
+ * that stretch then still lies where it is written, as finely as it is written. */
 static double fit_step(const struct csv_columns *columns, int64_t typical_ns)
 {
     size_t best_from = 0, best_end = 0;
@@ -106,7 +118,8 @@ static double fit_step(const struct csv_columns *columns, int64_t typical_ns)
     double steps = (double)(best_end - best_from - 1), step = span / steps;
     double rate = round(1e9 / step), period = round(step / 1e9);
     double snapped = rate >= 1 ? 1e9 / rate : period * 1e9;
-    return fabs(snapped * steps - span) <= step / 2 ? snapped : step;
+    double slack = fmin(step / 2, resolution_ns(columns, best_from, best_end));
+    return fabs(snapped * steps - span) <= slack ? snapped : step;
 }
 
 static int add_run(struct csv *csv, int64_t start_ns, size_t first, size_t count, double step_ns,
@@ -115,6 +128,10 @@ static int add_run(struct csv *csv, int64_t start_ns, size_t first, size_t count
     int failed = array_reserve((void **)&csv->runs, &csv->run_room, csv->run_count + 1,
                                sizeof *csv->runs, err);
     int64_t span = (int64_t)llround(step_ns * (double)count);
+    struct run *before = csv->run_count > 0 ? &csv->runs[csv->run_count - 1] : NULL;
+    /* The time before a hole may be written early: runs never overlap all the same. */
+    if (!failed && before && run_end_ns(before) > start_ns)
+        before->span_ns = start_ns - before->start_ns;
     if (!failed)
         csv->runs[csv->run_count++] =
             (struct run){start_ns, span > 0 ? span : 1, (int64_t)first, (int64_t)count};

@@ -14,6 +14,9 @@
 #include "base/str.h"
 #include "recording/reader.h"
 
+/* What one file may unpack to: more is no recording, but a trap or a mistake. */
+static const uint64_t unpacked_most = (uint64_t)16 << 30;
+
 enum { PIECE = 1 << 16, CELL_MOST = 64, NO_COLUMN = -1 };
 
 struct parsing {
@@ -358,6 +361,7 @@ static int feed_gzip(struct parsing *parsing, struct csv_parser *parser, const u
     z_stream stream = {0};
     char *piece = malloc(PIECE);
     bool first = true;
+    uint64_t unpacked = 0;
     if (!piece || inflateInit2(&stream, 15 + 16) != Z_OK) {
         free(piece);
         return err_memory(parsing->err, parsing->path);
@@ -377,6 +381,12 @@ static int feed_gzip(struct parsing *parsing, struct csv_parser *parser, const u
         size_t skip = first && got > 0 ? first_piece(parsing, parser, piece, got) : 0;
         first = first && got == 0;
         failed = feed(parsing, parser, piece + skip, got - skip);
+        unpacked += got;
+        if (!failed && unpacked > unpacked_most)
+            failed = err_set(parsing->err, ERR_FORMAT,
+                             "%s: unpacks to more than 16 GiB; unpack and "
+                             "cut it first",
+                             parsing->path);
         if (code == Z_STREAM_END && (stream.avail_in > 0 || left > 0) && *stream.next_in == 0x1F)
             code = inflateReset(&stream); /* another member follows */
     }

@@ -80,17 +80,29 @@ static void decode(const struct wfdb *wfdb, const struct piece *piece, int64_t f
     }
 }
 
+/* The piece that holds a sample: the last that begins at or before it. */
+static size_t piece_of(const struct pieces *pieces, int64_t sample)
+{
+    size_t low = 0, high = pieces->count;
+    while (high - low > 1) {
+        size_t middle = low + (high - low) / 2;
+        if (pieces->items[middle].first <= sample)
+            low = middle;
+        else
+            high = middle;
+    }
+    return low;
+}
+
 static int wfdb_read(const struct recording *recording, size_t channel, int64_t first,
                      int64_t count, float *out, struct err *err)
 {
     (void)err;
     const struct wfdb *wfdb = self(recording);
     const struct pieces *pieces = &wfdb->pieces[channel];
-    for (size_t i = 0; i < pieces->count && count > 0; i++) {
+    for (size_t i = piece_of(pieces, first); count > 0; i++) {
         const struct piece *piece = &pieces->items[i];
         int64_t within = first - piece->first;
-        if (within >= piece->count)
-            continue;
         int64_t step = piece->count - within < count ? piece->count - within : count;
         decode(wfdb, piece, within, step, out);
         first += step;
@@ -153,6 +165,9 @@ static int open_file(struct wfdb *wfdb, const char *header_path, const char *nam
                                sizeof *wfdb->opened, err);
     if (failed)
         return failed;
+    if (strchr(name, '/'))
+        return err_set(err, ERR_FORMAT, "%s: names the file '%s' outside its own folder",
+                       header_path, name);
     struct signal_file made = {.path = path_beside(header_path, name)};
     if (!made.path)
         return err_memory(err, name);
@@ -176,14 +191,19 @@ struct segment {
 };
 
 /* Which channel of the record a signal of a segment is: its place in a fixed layout, its
- * description in a variable one; channel_count when it is none. */
+ * description in a variable one (the second of one name is the second there too); channel_count
+ * when it is none. */
 static size_t channel_of(const struct wfdb *wfdb, const struct wfdb_header *layout,
                          const struct wfdb_header *header, size_t signal)
 {
+    const char *wanted = header->signals[signal].description;
+    size_t before = 0;
     if (!layout || layout == header)
         return signal;
+    for (size_t i = 0; i < signal; i++)
+        before += strcmp(header->signals[i].description, wanted) == 0;
     for (size_t i = 0; i < wfdb->channel_count; i++) {
-        if (strcmp(layout->signals[i].description, header->signals[signal].description) == 0)
+        if (strcmp(layout->signals[i].description, wanted) == 0 && before-- == 0)
             return i;
     }
     return wfdb->channel_count;
@@ -325,6 +345,9 @@ static int read_header(struct wfdb *wfdb, const char *path, struct wfdb_header *
 static int segment_header(struct wfdb *wfdb, const char *name, struct wfdb_header *header,
                           const char **path, struct err *err)
 {
+    if (strchr(name, '/'))
+        return err_set(err, ERR_FORMAT, "%s: names the segment '%s' outside its own folder",
+                       wfdb->path, name);
     char *file = arena_printf(&wfdb->base.arena, "%s.hea", name);
     char *beside = file ? path_beside(wfdb->path, file) : NULL;
     *path = beside ? arena_string(&wfdb->base.arena, beside) : NULL;
