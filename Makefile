@@ -78,7 +78,7 @@ $(EMBEDDED): schema/embed.sh schema/codebook.csv $(MIGRATIONS)
 build: build/incisura
 
 build/incisura: build/release/incisura
-	@cp $< $@
+	@cp --remove-destination $< $@
 
 packages:
 	@.ci/packages $(BUILD_PACKAGES)

@@ -45,7 +45,7 @@ static int disk_map(const struct file_space *self, const char *path, struct mapp
     int failed = open_regular(path, &fd, &stat, err);
     if (failed)
         return failed;
-    struct mapped made = {NULL, (size_t)stat.st_size};
+    struct mapped made = {NULL, (size_t)stat.st_size, fd + 1};
     if (made.size > 0) {
         void *data = mmap(NULL, made.size, PROT_READ, MAP_SHARED, fd, 0);
         if (data == MAP_FAILED)
@@ -53,8 +53,9 @@ static int disk_map(const struct file_space *self, const char *path, struct mapp
         else
             made.data = data;
     }
-    (void)close(fd);
-    if (!failed)
+    if (failed)
+        (void)close(fd);
+    else
         *out = made;
     return failed;
 }
@@ -64,10 +65,29 @@ static void disk_unmap(const struct file_space *self, struct mapped *mapped)
     (void)self;
     if (mapped->data)
         (void)munmap((void *)(uintptr_t)mapped->data, mapped->size);
+    if (mapped->handle > 0)
+        (void)close(mapped->handle - 1);
     *mapped = (struct mapped){0};
 }
 
-const struct file_space disk_files = {disk_map, disk_unmap};
+static int disk_copy(const struct file_space *self, const struct mapped *mapped, size_t at,
+                     size_t size, uint8_t *out, struct err *err)
+{
+    (void)self;
+    for (size_t done = 0; done < size;) {
+        ssize_t got = pread(mapped->handle - 1, out + done, size - done, (off_t)(at + done));
+        if (got < 0 && errno == EINTR)
+            continue;
+        if (got < 0)
+            return err_errno(err, "recording", "read");
+        if (got == 0)
+            return err_set(err, ERR_IO, "recording: byte %zu is not there any more", at + done);
+        done += (size_t)got;
+    }
+    return ERR_OK;
+}
+
+const struct file_space disk_files = {disk_map, disk_unmap, disk_copy};
 
 static int memory_map(const struct file_space *self, const char *path, struct mapped *out,
                       struct err *err)
@@ -75,7 +95,7 @@ static int memory_map(const struct file_space *self, const char *path, struct ma
     const struct memory_files *space = (const struct memory_files *)(const void *)self;
     for (size_t i = 0; i < space->count; i++) {
         if (strcmp(space->files[i].path, path) == 0) {
-            *out = (struct mapped){space->files[i].data, space->files[i].size};
+            *out = (struct mapped){space->files[i].data, space->files[i].size, 0};
             return ERR_OK;
         }
     }
@@ -88,9 +108,18 @@ static void memory_unmap(const struct file_space *self, struct mapped *mapped)
     *mapped = (struct mapped){0};
 }
 
+static int memory_copy(const struct file_space *self, const struct mapped *mapped, size_t at,
+                       size_t size, uint8_t *out, struct err *err)
+{
+    (void)self;
+    (void)err;
+    memcpy(out, mapped->data + at, size);
+    return ERR_OK;
+}
+
 void memory_files_init(struct memory_files *space, const struct memory_file *files, size_t count)
 {
-    *space = (struct memory_files){{memory_map, memory_unmap}, files, count};
+    *space = (struct memory_files){{memory_map, memory_unmap, memory_copy}, files, count};
 }
 
 char *path_beside(const char *path, const char *name)

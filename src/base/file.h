@@ -19,6 +19,7 @@
 struct mapped {
     const uint8_t *data; /* read-only; NULL when size is 0 */
     size_t size;
+    int handle; /* the space's own; disk: file descriptor + 1 */
 };
 
 /* Where names become bytes. `map` and `unmap` may be called from one thread at a time. */
@@ -26,6 +27,10 @@ struct file_space {
     int (*map)(const struct file_space *self, const char *path, struct mapped *out,
                struct err *err);
     void (*unmap)(const struct file_space *self, struct mapped *mapped);
+    /* Copies bytes [at, at + size), which lie inside, without touching the map: for a few bytes
+     * here and there in a large file a page fault each costs several times a read. */
+    int (*copy)(const struct file_space *self, const struct mapped *mapped, size_t at, size_t size,
+                uint8_t *out, struct err *err);
 };
 
 /* The real disk: mmap, read-only. A directory or an unreadable file is one line of error. */

@@ -11,7 +11,7 @@
 #include "base/str.h"
 #include "base/table.h"
 #include "command/command_impl.h"
-#include "command/mark_entry.h"
+#include "case/mark_entry.h"
 
 static const struct option_spec options[] = {
     {"column", "FIELD=NAME", true,
@@ -199,6 +199,7 @@ static int import_annotation(struct import *import, const struct clock_map *map,
         .unit = "",
         .route = "",
         .note = code->kind == CODE_NOTE ? annotation->text : "",
+        .state = MARK_MARKED,
         .source = MARK_IMPORT,
         .stamp_clock = "",
         .stamp_ns = NS_NONE,

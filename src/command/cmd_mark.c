@@ -10,7 +10,7 @@
 
 #include "base/str.h"
 #include "command/command_impl.h"
-#include "command/mark_entry.h"
+#include "case/mark_entry.h"
 
 static const struct option_spec mark_options[] = {
     {"at", "TIME", false, "when (required): 09:41:12.250, +00:34:07.5 or an ISO 8601 time"},

@@ -52,16 +52,16 @@ static bool parse_number(const struct parsing *parsing, const char *text, double
 
 /* ---- header ---- */
 
-/* "ECG II [mV]" or "ECG II (mV)" into label and unit. */
+/* "ECG II [mV]" or "ECG II (mV)" into label and unit; a unit may have brackets itself: mm[Hg]. */
 static int split_header(struct parsing *parsing, const char *text, const char **label,
                         const char **unit)
 {
     size_t length = strlen(text);
     const char *open = NULL;
     if (length > 0 && text[length - 1] == ']')
-        open = strrchr(text, '[');
+        open = strchr(text, '[');
     else if (length > 0 && text[length - 1] == ')')
-        open = strrchr(text, '(');
+        open = strchr(text, '(');
     size_t label_length = open ? (size_t)(open - text) : length;
     size_t unit_length = open ? length - label_length - 2 : 0;
     *label = recording_text(parsing->arena, (const uint8_t *)text, label_length);

@@ -189,20 +189,13 @@ static int count_records(struct edf *edf, struct err *err)
     return ERR_OK;
 }
 
-static const struct edf_signal *time_keeper(const struct edf *edf)
+static bool has_annotations(const struct edf *edf)
 {
     for (size_t i = 0; i < edf->header.signal_count; i++) {
         if (edf->header.signals[i].annotations)
-            return &edf->header.signals[i];
+            return true;
     }
-    return NULL;
-}
-
-static const uint8_t *annotation_bytes(const struct edf *edf, const struct edf_signal *signal,
-                                       int64_t record, size_t *size)
-{
-    *size = (size_t)(signal->samples * edf->header.width);
-    return edf->mapped.data + edf->header.bytes + record * edf->header.record_bytes + signal->at;
+    return false;
 }
 
 /* Half a sample of the fastest signal: onsets are written with few decimals, and a record that
@@ -229,24 +222,24 @@ static int add_stretch(struct edf *edf, int64_t start_ns, int64_t record, struct
 
 struct oddities {
     int64_t no_onset, backwards;
+    size_t malformed;
 };
 
-/* Puts record number `record` after the last one, or opens a new stretch at its own onset. */
-static int place_record(struct edf *edf, const struct edf_signal *keeper, int64_t record,
-                        int64_t slack, struct oddities *odd, struct err *err)
+/* Puts record number `record`, which says that it starts at `said` (NS_NONE: does not say), after
+ * the last one, or opens a new stretch at its own onset. */
+static int place_record(struct edf *edf, int64_t record, int64_t said, int64_t slack,
+                        struct oddities *odd, struct err *err)
 {
     const struct stretch *last =
         edf->stretch_count > 0 ? &edf->stretches[edf->stretch_count - 1] : NULL;
     int64_t expected = last ? last->start_ns + last->count * edf->header.record_ns : 0;
-    int64_t said = 0, onset = expected;
-    size_t size;
-    const uint8_t *bytes = annotation_bytes(edf, keeper, record, &size);
-    if (tal_record_onset(bytes, size, &said)) {
+    int64_t onset = expected;
+    if (said == NS_NONE) {
+        odd->no_onset++;
+    } else {
         if (record == 0)
             edf->origin_ns = said;
         onset = said - edf->origin_ns;
-    } else {
-        odd->no_onset++;
     }
     odd->backwards += onset < expected - slack;
     int failed = ERR_OK;
@@ -254,6 +247,78 @@ static int place_record(struct edf *edf, const struct edf_signal *keeper, int64_
         failed = add_stretch(edf, onset, record, err);
     if (!failed)
         edf->stretches[edf->stretch_count - 1].count++;
+    return failed;
+}
+
+static int add_annotation(struct edf *edf, const struct tal_text *text, struct err *err)
+{
+    char *copy = recording_text(&edf->base.arena, text->text, text->length);
+    if (!copy)
+        return err_memory(err, "an annotation");
+    int failed = array_reserve((void **)&edf->annotations, &edf->annotation_room,
+                               edf->annotation_count + 1, sizeof *edf->annotations, err);
+    if (!failed)
+        edf->annotations[edf->annotation_count++] =
+            (struct annotation){text->onset_ns - edf->origin_ns, text->span_ns, copy, ""};
+    return failed;
+}
+
+static int take_texts(struct edf *edf, const uint8_t *bytes, size_t size, struct oddities *odd,
+                      struct err *err)
+{
+    struct tal_reader reader;
+    struct tal_text text;
+    int failed = ERR_OK;
+    tal_begin(&reader, bytes, size);
+    while (!failed && tal_next(&reader, &text)) {
+        if (text.length > 0)
+            failed = add_annotation(edf, &text, err);
+    }
+    odd->malformed += reader.malformed;
+    return failed;
+}
+
+/* All annotation signals of one record; the first of them says when the record starts. `buffer`
+ * has room for the largest. */
+static int read_record(struct edf *edf, int64_t record, int64_t slack, uint8_t *buffer,
+                       struct oddities *odd, struct err *err)
+{
+    bool first = true;
+    for (size_t i = 0; i < edf->header.signal_count; i++) {
+        const struct edf_signal *signal = &edf->header.signals[i];
+        if (!signal->annotations)
+            continue;
+        size_t size = (size_t)(signal->samples * edf->header.width);
+        int64_t at = edf->header.bytes + record * edf->header.record_bytes + signal->at;
+        int64_t said = NS_NONE;
+        int failed = edf->files->copy(edf->files, &edf->mapped, (size_t)at, size, buffer, err);
+        if (!failed && first) {
+            if (!tal_record_onset(buffer, size, &said))
+                said = NS_NONE;
+            failed = place_record(edf, record, said, slack, odd, err);
+        }
+        if (!failed)
+            failed = take_texts(edf, buffer, size, odd, err);
+        if (failed)
+            return failed;
+        first = false;
+    }
+    return ERR_OK;
+}
+
+static int read_records(struct edf *edf, struct oddities *odd, struct err *err)
+{
+    int64_t slack = slack_ns(edf), most = 0;
+    for (size_t i = 0; i < edf->header.signal_count; i++) {
+        const struct edf_signal *signal = &edf->header.signals[i];
+        if (signal->annotations && signal->samples > most)
+            most = signal->samples;
+    }
+    void *buffer = NULL;
+    int failed = array_new(&buffer, (size_t)(most * edf->header.width), 1, err);
+    for (int64_t record = 0; record < edf->records && !failed; record++)
+        failed = read_record(edf, record, slack, buffer, odd, err);
+    free(buffer);
     return failed;
 }
 
@@ -284,7 +349,7 @@ static int note_time_oddities(struct edf *edf, const struct oddities *odd, struc
 
 static int place_records(struct edf *edf, struct err *err)
 {
-    const struct edf_signal *keeper = time_keeper(edf);
+    bool keeper = has_annotations(edf);
     int failed = ERR_OK;
     if (edf->header.plus && !keeper)
         failed = recording_note(&edf->base, err,
@@ -298,9 +363,11 @@ static int place_records(struct edf *edf, struct err *err)
         return failed;
     }
     struct oddities odd = {0};
-    int64_t slack = slack_ns(edf);
-    for (int64_t record = 0; record < edf->records && !failed; record++)
-        failed = place_record(edf, keeper, record, slack, &odd, err);
+    failed = read_records(edf, &odd, err);
+    if (!failed && odd.malformed > 0)
+        failed = recording_note(&edf->base, err,
+                                "%zu annotation lists break the format's grammar and are left out",
+                                odd.malformed);
     return failed ? failed : note_time_oddities(edf, &odd, err);
 }
 
@@ -423,19 +490,6 @@ static int make_gaps(struct edf *edf, struct err *err)
 
 /* ---- annotations ---- */
 
-static int add_annotation(struct edf *edf, const struct tal_text *text, struct err *err)
-{
-    char *copy = recording_text(&edf->base.arena, text->text, text->length);
-    if (!copy)
-        return err_memory(err, "an annotation");
-    int failed = array_reserve((void **)&edf->annotations, &edf->annotation_room,
-                               edf->annotation_count + 1, sizeof *edf->annotations, err);
-    if (!failed)
-        edf->annotations[edf->annotation_count++] =
-            (struct annotation){text->onset_ns - edf->origin_ns, text->span_ns, copy, ""};
-    return failed;
-}
-
 static int by_onset(const void *a, const void *b)
 {
     const struct annotation *first = a, *second = b;
@@ -444,36 +498,12 @@ static int by_onset(const void *a, const void *b)
     return strcmp(first->text, second->text);
 }
 
-static int read_annotations(struct edf *edf, struct err *err)
+static void sort_annotations(struct edf *edf)
 {
-    size_t malformed = 0;
-    int failed = ERR_OK;
-    for (size_t i = 0; i < edf->header.signal_count; i++) {
-        const struct edf_signal *signal = &edf->header.signals[i];
-        for (int64_t record = 0; signal->annotations && record < edf->records; record++) {
-            size_t size;
-            const uint8_t *bytes = annotation_bytes(edf, signal, record, &size);
-            struct tal_reader reader;
-            struct tal_text text;
-            tal_begin(&reader, bytes, size);
-            while (!failed && tal_next(&reader, &text)) {
-                if (text.length > 0)
-                    failed = add_annotation(edf, &text, err);
-            }
-            malformed += reader.malformed;
-            if (failed)
-                return failed;
-        }
-    }
     if (edf->annotation_count > 0)
         qsort(edf->annotations, edf->annotation_count, sizeof *edf->annotations, by_onset);
     edf->base.info.annotations = edf->annotations;
     edf->base.info.annotation_count = edf->annotation_count;
-    return malformed == 0 ? ERR_OK
-                          : recording_note(&edf->base, err,
-                                           "%zu annotation lists break the format's grammar and "
-                                           "are left out",
-                                           malformed);
 }
 
 /* ---- opening ---- */
@@ -521,10 +551,9 @@ static int fill(struct edf *edf, struct err *err)
         failed = make_channels(edf, err);
     if (!failed)
         failed = make_gaps(edf, err);
-    if (!failed)
-        failed = read_annotations(edf, err);
     if (failed)
         return failed;
+    sort_annotations(edf);
     struct recording_info *info = &edf->base.info;
     info->format = edf->header.format;
     info->subject = edf->header.subject;

@@ -8,22 +8,6 @@
 #include "codebook/unit.h"
 #include "terminal/review_impl.h"
 
-static bool takes_value(const struct code *code)
-{
-    return code &&
-           (code->kind == CODE_DOSE || code->kind == CODE_RATE || code->kind == CODE_SETTING);
-}
-
-enum mark_state mark_state_now(const struct code *code, const struct mark *mark)
-{
-    bool lacks = (takes_value(code) && !mark->has_value) ||
-                 (code && code->kind == CODE_SPAN && mark->until_ns == NS_NONE) ||
-                 (code && code->kind == CODE_NOTE && !*mark->note);
-    if (mark->state == MARK_REJECTED || (mark->state == MARK_CONFIRMED && !lacks))
-        return mark->state;
-    return lacks ? MARK_INCOMPLETE : MARK_MARKED;
-}
-
 /* The value last entered for the same code, by order of entry. */
 static void last_value(const struct review *review, size_t index, char out[VALUE_TEXT_SIZE])
 {
@@ -87,7 +71,7 @@ bool review_ask_lacking(struct review *review, size_t index)
 {
     const struct mark *mark = &review->marks[index];
     const struct code *code = review->codes[index];
-    if (takes_value(code) && !mark->has_value)
+    if (code_takes_value(code) && !mark->has_value)
         review_ask(review, ASK_VALUE, index);
     else if (code && code->kind == CODE_NOTE && !*mark->note)
         review_ask(review, ASK_NOTE, index);
@@ -193,7 +177,7 @@ static void save_entry(struct review *review, size_t index)
     char unit[VALUE_TEXT_SIZE];
     if (!read_entry(review, review->codes[index], &mark, unit, sizeof unit))
         return;
-    mark.state = mark_state_now(review->codes[index], &mark);
+    mark.state = mark_state_of(review->codes[index], &mark);
     struct err err = {0};
     int64_t id = mark.id;
     int failed = store_mark_change(review->store, &mark, "", &err);

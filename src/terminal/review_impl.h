@@ -4,6 +4,7 @@
 #ifndef TERMINAL_REVIEW_IMPL_H
 #define TERMINAL_REVIEW_IMPL_H
 
+#include "case/mark_entry.h"
 #include "terminal/columns.h"
 #include "terminal/display_filter.h"
 #include "terminal/prompt.h"
@@ -151,8 +152,6 @@ void review_ask(struct review *review, enum asking asking, size_t index);
 bool review_ask_lacking(struct review *review, size_t index);
 /* Enter was pressed: takes the text, or says in the prompt what is wrong with it. */
 void review_take_entry(struct review *review);
-/* The state of a mark that a person completed, or not yet. */
-enum mark_state mark_state_now(const struct code *code, const struct mark *mark);
 
 /* ---- drawing, one file each ---- */
 void draw_strip(struct review *review, struct canvas *canvas);

@@ -120,7 +120,7 @@ static void add(struct review *review, const struct code *code)
         .stamp_ns = NS_NONE,
         .stamp_utc_ns = utc_now_ns(),
     };
-    mark.state = mark_state_now(code, &mark);
+    mark.state = mark_state_of(code, &mark);
     struct err err = {0};
     int64_t id;
     int failed = store_mark_add(review->store, &mark, "", &id, &err);
@@ -150,7 +150,7 @@ void review_mark(struct review *review, const struct code *code)
     }
     struct mark mark = review->marks[open];
     mark.until_ns = review->cursor_ns;
-    mark.state = mark_state_now(code, &mark);
+    mark.state = mark_state_of(code, &mark);
     (void)change(review, &mark, "end of");
 }
 
@@ -204,7 +204,7 @@ static void set_state(struct review *review, enum mark_state state)
     struct mark mark = review->marks[index];
     bool back = mark.state == state;
     mark.state = MARK_MARKED;
-    enum mark_state plain = mark_state_now(review->codes[index], &mark);
+    enum mark_state plain = mark_state_of(review->codes[index], &mark);
     if (!back && state == MARK_CONFIRMED && plain == MARK_INCOMPLETE) {
         review_say(review, INK_WARN, "it is incomplete: Enter fills in what it lacks");
         return;

@@ -3,8 +3,8 @@
  *
  * Even traces go through a windowed-sinc resampler (dsp/resample.h): anti-aliased on the way down,
  * band-limited on the way up, the samples themselves where rate and grid agree. Slow ones (10
- * samples a second and fewer) that are not thinned out are drawn straight between samples. Step traces give
- * the value that stands, for as long as `age_ns` allows. NaN: not valid, never made up.
+ * samples a second and fewer) that are not thinned out are drawn straight between samples. Step
+ * traces give the value that stands, for as long as `age_ns` allows. NaN: not valid, never made up.
  */
 #ifndef WINDOW_CUT_H
 #define WINDOW_CUT_H

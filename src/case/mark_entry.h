@@ -1,9 +1,9 @@
 /*
  * mark_entry.h - making a mark out of typed text: code, times, value, unit, checked against the
- * codebook. Shared by `mark` and `import`.
+ * codebook. Shared by the commands and the review screen.
  */
-#ifndef COMMAND_MARK_ENTRY_H
-#define COMMAND_MARK_ENTRY_H
+#ifndef CASE_MARK_ENTRY_H
+#define CASE_MARK_ENTRY_H
 
 #include "base/arena.h"
 #include "case/casefile.h"
@@ -21,7 +21,12 @@ MUST_CHECK int mark_entry(const struct casefile *casefile, const struct mark_tex
 /* A code by its code or, in any letter case, by its label; NULL when there is none. */
 const struct code *code_by_text(const struct codebook *codebook, const char *text);
 
-/* Whether a mark of this kind still lacks what its code asks for. */
+/* The state a mark is in once its fields are as they are: incomplete while it lacks what its code
+ * asks for, else marked; a rejected one stays rejected, a complete confirmed one confirmed. `code`
+ * may be NULL: a code that is not in the codebook asks for nothing. */
 enum mark_state mark_state_of(const struct code *code, const struct mark *mark);
+
+/* Dose, rate and setting. */
+bool code_takes_value(const struct code *code);
 
 #endif

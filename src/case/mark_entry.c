@@ -1,7 +1,7 @@
 /*
  * mark_entry.c - typed text to a mark. Stores nothing.
  */
-#include "command/mark_entry.h"
+#include "case/mark_entry.h"
 
 #include <stdlib.h>
 #include <string.h>
@@ -27,13 +27,19 @@ const struct code *code_by_text(const struct codebook *codebook, const char *tex
     return code;
 }
 
+bool code_takes_value(const struct code *code)
+{
+    return code &&
+           (code->kind == CODE_DOSE || code->kind == CODE_RATE || code->kind == CODE_SETTING);
+}
+
 enum mark_state mark_state_of(const struct code *code, const struct mark *mark)
 {
-    bool wants_value =
-        code->kind == CODE_DOSE || code->kind == CODE_RATE || code->kind == CODE_SETTING;
-    bool lacks = (wants_value && !mark->has_value) ||
-                 (code->kind == CODE_SPAN && mark->until_ns == NS_NONE) ||
-                 (code->kind == CODE_NOTE && !given(mark->note));
+    bool lacks = (code_takes_value(code) && !mark->has_value) ||
+                 (code && code->kind == CODE_SPAN && mark->until_ns == NS_NONE) ||
+                 (code && code->kind == CODE_NOTE && !given(mark->note));
+    if (mark->state == MARK_REJECTED || (mark->state == MARK_CONFIRMED && !lacks))
+        return mark->state;
     return lacks ? MARK_INCOMPLETE : MARK_MARKED;
 }
 
@@ -96,6 +102,7 @@ int mark_entry(const struct casefile *casefile, const struct mark_text *text, st
     if (!code)
         return no_such_code(codebook, text->code, err);
     struct mark made = {
+        .state = MARK_MARKED,
         .code = code->code,
         .until_ns = NS_NONE,
         .route = given(text->route) ? text->route : "",
