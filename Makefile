@@ -5,6 +5,7 @@
 
 MAKEFLAGS += --no-builtin-rules --no-print-directory
 .DELETE_ON_ERROR:
+.SECONDARY:
 .DEFAULT_GOAL := build
 
 PREFIX ?= /usr/local

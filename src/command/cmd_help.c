@@ -19,8 +19,7 @@ static const char caution[] =
     "Research software: not a monitor, not a medical device, no dosing advice. Local policy, the "
     "ethics approval and the licensed clinicians in the room come first.";
 
-/* Prints `text` wrapped at WIDTH with every line indented. */
-static void wrap(FILE *to, int indent, const char *text)
+void help_wrap(FILE *to, int indent, const char *text)
 {
     int column = 0;
     while (*text) {
@@ -44,17 +43,17 @@ static void print_option(FILE *to, const struct option_spec *option)
     (void)snprintf(name, sizeof name, "--%s%s%s", option->name, option->value ? " " : "",
                    option->value ? option->value : "");
     (void)fprintf(to, "  %s%s\n", name, option->many ? "   (may be repeated)" : "");
-    wrap(to, 6, option->help);
+    help_wrap(to, 6, option->help);
 }
 
 int help_command(const struct command *command, FILE *to)
 {
     (void)fprintf(to, "incisura %s %s%s\n\n", command->name, command->args,
                   command->options ? " [--option ...]" : "");
-    wrap(to, 0, command->summary);
+    help_wrap(to, 0, command->summary);
     if (command->detail) {
         (void)fputc('\n', to);
-        wrap(to, 0, command->detail);
+        help_wrap(to, 0, command->detail);
     }
     if (command->options && command->options[0].name)
         (void)fputs("\noptions\n", to);
@@ -66,7 +65,7 @@ int help_command(const struct command *command, FILE *to)
 static void print_list(FILE *to)
 {
     (void)fprintf(to, "incisura %s\n\n", INCISURA_VERSION);
-    wrap(to, 0, job);
+    help_wrap(to, 0, job);
     (void)fputs("\nincisura COMMAND CASE [ARG ...] [--option VALUE]\n\ncommands\n", to);
     for (size_t i = 0; commands[i]; i++)
         (void)fprintf(to, "  %-9s %s\n", commands[i]->name, commands[i]->summary);
@@ -75,7 +74,7 @@ static void print_list(FILE *to)
         (void)fprintf(to, "  %-12s %s\n", topics[i].name, topics[i].summary);
     (void)fputs("\nexit status: 0 done, 1 found something wrong in the data, 2 could not do it\n\n",
                 to);
-    wrap(to, 0, caution);
+    help_wrap(to, 0, caution);
 }
 
 /* Text as roff: a backslash, and a dot or quote that would begin a line, are made harmless. */

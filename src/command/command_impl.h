@@ -17,6 +17,9 @@ void arguments_free(struct arguments *arguments);
 /* Prints a command's help; returns EXIT_DONE. */
 int help_command(const struct command *command, FILE *to);
 
+/* Prints `text` wrapped at 80 columns, every line indented. */
+void help_wrap(FILE *to, int indent, const char *text);
+
 /* A topic of `incisura help TOPIC` that is no command. */
 struct topic {
     const char *name, *summary;

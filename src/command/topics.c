@@ -4,6 +4,7 @@
 #include <stdio.h>
 #include <string.h>
 
+#include "base/str.h"
 #include "codebook/codebook.h"
 #include "command/command_impl.h"
 #include "physiology/derivation.h"
@@ -70,17 +71,28 @@ static void print_parameter(FILE *to, const struct parameter *parameter)
     (void)fprintf(to, "  %s\n", parameter->help);
 }
 
+/* "source: ..." wrapped under the name. */
+static void print_field(FILE *to, const char *name, const char *text)
+{
+    struct str line = {0};
+    str_putf(&line, "%s: %s", name, text);
+    help_wrap(to, 4, str_text(&line));
+    str_free(&line);
+}
+
 static void print_derivations(FILE *to)
 {
     for (size_t i = 0; derivations[i]; i++) {
         const struct derivation *d = derivations[i];
-        (void)fprintf(to, "%s  %s, from %s%s%s%s\n", d->name,
-                      d->kind == DERIVES_TRACE ? "trace" : "event train",
-                      d->needs_train ? d->needs_train : role_name(d->role),
-                      d->one_channel ? " (one channel)" : "", d->unit ? ", in " : "",
-                      d->unit ? d->unit : "");
-        (void)fprintf(to, "    %s\n    source: %s\n    edges: %s\n", d->summary, d->source,
-                      d->edges);
+        const char *from = d->needs_train         ? d->needs_train
+                           : d->role == ROLE_NONE ? "any channel"
+                                                  : role_name(d->role);
+        (void)fprintf(to, "%s  %s from %s%s%s\n", d->name,
+                      d->kind == DERIVES_TRACE ? "trace" : "event train", from,
+                      d->unit ? ", in " : "", d->unit ? d->unit : "");
+        help_wrap(to, 4, d->summary);
+        print_field(to, "source", d->source);
+        print_field(to, "edges", d->edges);
         for (size_t k = 0; d->parameters && d->parameters[k].name; k++)
             print_parameter(to, &d->parameters[k]);
     }

@@ -1,4 +1,4 @@
-#!/usr/bin/env python3
+#!/usr/bin/python3
 """The simulated theatre says the truth: its files, read by a small parser of our own, hold what
 truth.csv says, where it says, and the same seed gives the same bytes."""
 
