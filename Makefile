@@ -18,9 +18,9 @@ export PYTHON
 WARN := -Wall -Wextra -Wshadow -Wconversion -Wdouble-promotion -Wstrict-prototypes \
         -Wmissing-prototypes -Wundef -Wvla
 BASE_CFLAGS := -std=c17 -D_GNU_SOURCE -Isrc $(WARN) -pthread -MMD -MP
-LIBS := -lncursesw -ltinfo -lsqlite3 -lcsv -lfftw3f -lsodium -linih -ljansson -lz -lm -pthread
+LIBS := -lncursesw -ltinfo -lsqlite3 -lcsv -lsodium -linih -ljansson -lz -lm -pthread
 
-BUILD_PACKAGES := gcc libc6-dev make libncurses-dev libsqlite3-dev libcsv-dev libfftw3-dev \
+BUILD_PACKAGES := gcc libc6-dev make libncurses-dev libsqlite3-dev libcsv-dev \
                   libsodium-dev libinih-dev libjansson-dev zlib1g-dev
 TEST_PACKAGES := $(BUILD_PACKAGES) libcriterion-dev libedf-dev libbiosig-dev libvterm-dev \
                  python3-scipy r-base-core sqlite3 clang libclang-rt-14-dev

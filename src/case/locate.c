@@ -31,7 +31,7 @@ static int open_parts(const char *path, struct recording **out, struct err *err)
 
 int recording_state(const char *path, int64_t *size, int64_t *modified_ns, struct err *err)
 {
-    struct recording *recording;
+    struct recording *recording = NULL;
     *size = 0;
     *modified_ns = INT64_MIN;
     int failed = file_state(path, size, modified_ns, err);
@@ -49,7 +49,7 @@ int recording_state(const char *path, int64_t *size, int64_t *modified_ns, struc
 int recording_digest(const char *path, struct progress *progress, char out[DIGEST_TEXT_SIZE],
                      struct err *err)
 {
-    struct recording *recording;
+    struct recording *recording = NULL;
     int failed = digest_file(path, progress, out, err);
     if (!failed)
         failed = open_parts(path, &recording, err);

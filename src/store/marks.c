@@ -173,7 +173,10 @@ static int run_with_fields(struct store *store, const char *sql, int64_t id, con
     int failed = sql_prepare(store, sql, &statement, err);
     if (failed)
         return failed;
-    json_object_foreach((json_t *)(uintptr_t)fields, key, value) bind_json(statement, key, value);
+    json_object_foreach((json_t *)(uintptr_t)fields, key, value)
+    {
+        bind_json(statement, key, value);
+    }
     if (id > 0)
         (void)sqlite3_bind_int64(statement, sqlite3_bind_parameter_index(statement, ":id"), id);
     return sql_finish(store, statement, err);
@@ -186,7 +189,9 @@ int mark_write(struct store *store, int64_t id, const json_t *fields, struct err
     json_t *value;
     size_t count = 0;
     json_object_foreach((json_t *)(uintptr_t)fields, key, value)
+    {
         str_putf(&sql, "%s%s = :%s", count++ ? ", " : "UPDATE marks SET ", key, key);
+    }
     str_put(&sql, " WHERE id = :id");
     int failed = ERR_OK;
     if (str_failed(&sql))

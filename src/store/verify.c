@@ -95,8 +95,8 @@ static int none_left(struct store *store, const char *what, json_t *table, struc
 static int compare_all(struct store *store, struct replay *replay, struct err *err)
 {
     const struct mark *marks;
-    const struct stored_recording *recordings;
-    size_t mark_count, recording_count;
+    const struct stored_recording *recordings = NULL;
+    size_t mark_count = 0, recording_count = 0;
     marks_forget(store);
     store->recordings_known = false;
     int failed = store_marks(store, &marks, &mark_count, err);
