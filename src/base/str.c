@@ -134,8 +134,69 @@ static void put_shortest(struct str *str, double value, int first, int last, boo
     str_put(str, text);
 }
 
+/* Writes `digits` (count of them, not all zero) with the decimal point `decimals` from the right,
+ * trailing zeros dropped. Returns the length. */
+static size_t put_digits(char *out, bool negative, uint64_t digits, int decimals)
+{
+    char reversed[24];
+    size_t count = 0, length = 0;
+    for (; decimals > 0 && digits % 10 == 0; decimals--)
+        digits /= 10;
+    for (int at = 0; digits > 0 || at <= decimals; at++, digits /= 10) {
+        if (at == decimals && decimals > 0)
+            reversed[count++] = '.';
+        reversed[count++] = (char)('0' + digits % 10);
+    }
+    if (negative)
+        out[length++] = '-';
+    while (count > 0)
+        out[length++] = reversed[--count];
+    return length;
+}
+
+/* The usual sizes without printf: the fewest digits, 6 to 9, are found by rounding value * 10^k,
+ * and reading them back proves them. false = not found this way. The text is what "%.*g" gives. */
+static bool put_usual_float(struct str *str, float value)
+{
+    static const double tens[] = {1e0, 1e1, 1e2, 1e3,  1e4,  1e5, 1e6,
+                                  1e7, 1e8, 1e9, 1e10, 1e11, 1e12};
+    double size = fabs((double)value);
+    if (!(size >= 1e-3 && size < 1e5))
+        return false;
+    int exponent = -3;
+    while (exponent < 4 && size >= (exponent < -1 ? 1 / tens[-exponent - 1] : tens[exponent + 1]))
+        exponent++;
+    for (int digits = 6; digits <= 9; digits++) {
+        int decimals = digits - 1 - exponent;
+        char text[32];
+        double rounded = nearbyint(size * tens[decimals]);
+        if ((float)(rounded / tens[decimals]) != fabsf(value))
+            continue;
+        size_t length = put_digits(text, signbit(value), (uint64_t)rounded, decimals);
+        text[length] = '\0';
+        /* Rounding twice, to double and to float, could differ from rounding once. */
+        locale_t before = enter_c_locale();
+        bool same = strtof(text, NULL) == value;
+        (void)uselocale(before);
+        if (!same)
+            return false;
+        str_put_n(str, text, length);
+        return true;
+    }
+    return false;
+}
+
+void str_put_seconds(struct str *str, int64_t ns)
+{
+    char text[32];
+    uint64_t size = ns < 0 ? -(uint64_t)ns : (uint64_t)ns;
+    str_put_n(str, text, put_digits(text, ns < 0, size, 9));
+}
+
 void str_put_float(struct str *str, float value)
 {
+    if (put_usual_float(str, value))
+        return;
     put_shortest(str, (double)value, 6, 9, true);
 }
 

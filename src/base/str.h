@@ -36,6 +36,9 @@ void str_put_csv(struct str *str, const char *field);
 void str_put_float(struct str *str, float value);
 void str_put_double(struct str *str, double value);
 
+/* Nanoseconds as seconds, exactly: "12.5", "-0.002777777"; no trailing zeros. */
+void str_put_seconds(struct str *str, int64_t ns);
+
 /* The whole of `text` (surrounding blanks allowed) as a number; false when it is none. Always
  * with a decimal point, whatever the locale; number_parse_comma() takes a decimal comma as well.
  * Infinities and NaN are not numbers here. */

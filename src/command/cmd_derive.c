@@ -26,11 +26,6 @@ struct window {
     int64_t from_ns, to_ns;
 };
 
-static void put_seconds(struct str *out, int64_t ns)
-{
-    str_put_double(out, s_from_ns(ns));
-}
-
 static void flush_text(struct str *text)
 {
     (void)fwrite(str_text(text), 1, text->length, stdout);
@@ -51,7 +46,7 @@ static int print_trace(const struct trace *trace, struct window window, struct e
         int64_t step = count < PIECE ? count : PIECE;
         failed = trace_read(trace, first, step, values, err);
         for (int64_t i = 0; i < step && !failed; i++) {
-            put_seconds(&text, trace_time_ns(trace, first + i));
+            str_put_seconds(&text, trace_time_ns(trace, first + i));
             str_putc(&text, ',');
             str_put_float(&text, values[i]);
             str_putc(&text, '\n');
@@ -74,7 +69,7 @@ static int print_train(const struct train *train, struct window window, struct e
     for (size_t i = train_find(train, window.from_ns);
          i < train->count && train->events[i].time_ns < window.to_ns; i++) {
         const struct train_event *event = &train->events[i];
-        put_seconds(&text, event->time_ns);
+        str_put_seconds(&text, event->time_ns);
         str_putc(&text, ',');
         str_put_float(&text, event->value);
         str_putf(&text, ",%s\n",

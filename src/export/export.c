@@ -75,6 +75,24 @@ static int prepare_signals(struct exporting *run, struct err *err)
     return failed;
 }
 
+/* t_s is the same for every window: written once. */
+static int prepare_times(struct exporting *run, struct err *err)
+{
+    const struct recipe *recipe = run->job.recipe;
+    const char **times = arena_alloc(&run->arena, (size_t)recipe->samples, sizeof *times);
+    struct str text = {0};
+    bool good = times != NULL;
+    for (int64_t k = 0; good && k < recipe->samples; k++) {
+        str_clear(&text);
+        str_put_double(&text, recipe_time_s(recipe, k));
+        times[k] = arena_string(&run->arena, str_text(&text));
+        good = times[k] && !str_failed(&text);
+    }
+    str_free(&text);
+    run->job.times = times;
+    return good ? ERR_OK : err_memory(err, "the windows");
+}
+
 static int prepare_windows(struct exporting *run, struct err *err)
 {
     const struct recipe *recipe = run->job.recipe;
@@ -93,6 +111,8 @@ static int prepare_windows(struct exporting *run, struct err *err)
     if (!failed)
         failed = array_new(&scratch, (size_t)recipe->samples, sizeof *run->scratch, err);
     run->scratch = scratch;
+    if (!failed)
+        failed = prepare_times(run, err);
     run->features = arena_alloc(&run->arena, recipe->signal_count, sizeof *run->features);
     if (!failed && !run->features)
         failed = err_memory(err, "the windows");

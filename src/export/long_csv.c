@@ -41,7 +41,7 @@ static int put_signal(const struct export_job *job, const float *values, const s
 {
     for (int64_t k = 0; k < job->recipe->samples; k++) {
         str_put_n(text, str_text(start), start->length);
-        str_put_double(text, recipe_time_s(job->recipe, k));
+        str_put(text, job->times[k]);
         str_put_n(text, str_text(middle), middle->length);
         str_put_float(text, values[k]);
         str_put(text, isnan(values[k]) ? ",0\n" : ",1\n");

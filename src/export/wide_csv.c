@@ -34,7 +34,7 @@ static int window(const struct export_job *job, const struct export_window *wind
     str_putc(&start, ',');
     for (int64_t k = 0; k < samples && !failed; k++) {
         str_put_n(&text, str_text(&start), start.length);
-        str_put_double(&text, recipe_time_s(job->recipe, k));
+        str_put(&text, job->times[k]);
         for (size_t i = 0; i < job->recipe->signal_count; i++) {
             str_putc(&text, ',');
             str_put_float(&text, window->values[(int64_t)i * samples + k]);

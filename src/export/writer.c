@@ -27,5 +27,5 @@ void put_row_start(const struct export_job *job, const struct mark *mark, struct
     str_putf(out, ",%" PRId64 ",", mark->id);
     str_put_csv(out, mark->code);
     str_putc(out, ',');
-    str_put_double(out, s_from_ns(mark->onset_ns));
+    str_put_seconds(out, mark->onset_ns);
 }

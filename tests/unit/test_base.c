@@ -3,6 +3,7 @@
  */
 #include <criterion/criterion.h>
 
+#include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
@@ -95,6 +96,49 @@ Test(base, shortest_numbers_read_back_the_same)
     str_put_double(&str, 0.1);
     cr_expect_str_eq(str_text(&str), "0.1");
     str_free(&str);
+}
+
+/* Every text is what the C library's own shortest search gives, over values of all sizes. */
+Test(base, floats_are_written_shortest)
+{
+    uint32_t state = 1;
+    for (int i = 0; i < 200000; i++) {
+        state = state * 1664525u + 1013904223u;
+        uint32_t bits = i % 2 ? state : 0x3F800000u + (state >> 9) - (state & 0x07FFFFFFu);
+        float value;
+        memcpy(&value, &bits, sizeof value);
+        if (!isfinite(value))
+            continue;
+        char want[40];
+        for (int digits = 6; digits <= 9; digits++) {
+            (void)snprintf(want, sizeof want, "%.*g", digits, (double)value);
+            if (strtof(want, NULL) == value)
+                break;
+        }
+        struct str str = {0};
+        str_put_float(&str, value);
+        cr_assert_str_eq(str_text(&str), want);
+        str_free(&str);
+    }
+}
+
+Test(base, seconds_are_exact)
+{
+    static const struct {
+        int64_t ns;
+        const char *text;
+    } rows[] = {{0, "0"},
+                {1, "0.000000001"},
+                {-2777777, "-0.002777777"},
+                {12500000000, "12.5"},
+                {100000000000, "100"},
+                {-1000000001, "-1.000000001"}};
+    for (size_t i = 0; i < sizeof rows / sizeof *rows; i++) {
+        struct str str = {0};
+        str_put_seconds(&str, rows[i].ns);
+        cr_expect_str_eq(str_text(&str), rows[i].text);
+        str_free(&str);
+    }
 }
 
 Test(base, csv_fields_are_quoted_only_when_they_must)
