@@ -136,7 +136,7 @@ demo: packages
 SUITES := unit published robustness
 # -Wconversion and -Wundef warn inside Criterion's own macros.
 TEST_CFLAGS := $(BASE_CFLAGS) $(asan_CFLAGS) -Wno-conversion -Wno-undef -Itests
-TEST_LIBS := -lcriterion -ledf -lvterm $(LIBS)
+TEST_LIBS := -lcriterion -ledf -lbiosig -lvterm $(LIBS)
 
 build/tests/%.o: tests/%.c
 	@mkdir -p $(@D)

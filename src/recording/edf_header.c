@@ -202,15 +202,20 @@ static int read_start(struct reading *reading, struct edf_header *header, struct
     if (has_date)
         start = (struct civil){.day = date[0], .month = date[1], .year = century(date[2])};
     has_date = has_date && civil_valid(&start);
-    if (has_plus && (!has_date || (plus.day == start.day && plus.month == start.month))) {
+    int failed = ERR_OK;
+    if (has_plus && !has_date)
+        failed = recording_note(recording, err,
+                                "start date '%.8s' (bytes 168..175) is no date; that of the "
+                                "recording field is taken",
+                                (const char *)reading->data + 168);
+    else if (has_plus && (plus.day != start.day || plus.month != start.month))
+        failed = recording_note(recording, err,
+                                "the recording field says another start date than bytes "
+                                "168..175; bytes 168..175 are taken");
+    if (failed)
+        return failed;
+    if (has_plus && (!has_date || (plus.day == start.day && plus.month == start.month)))
         start = plus;
-    } else if (has_plus) {
-        int failed = recording_note(recording, err,
-                                    "the recording field says another start date than bytes "
-                                    "168..175; bytes 168..175 are taken");
-        if (failed)
-            return failed;
-    }
     if (!three_numbers(reading->data + 176, clock))
         clock[0] = 99;
     start.hour = clock[0];
