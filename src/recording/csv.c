@@ -241,16 +241,17 @@ static int make_channels(struct csv *csv, struct err *err)
             continue;
         }
         if (column->texts > 0)
-            failed = recording_note(base, err,
-                                    "column '%s': %zu cells are no numbers (first on line %zu) and "
-                                    "are taken as empty",
-                                    column->label, column->texts, column->first_text_line);
+            failed =
+                recording_note(base, err,
+                               "column '%s': cells that are no numbers are taken as empty: %zu "
+                               "(first on line %zu)",
+                               column->label, column->texts, column->first_text_line);
         if (!failed)
             failed = make_channel(csv, column, &base->channels[made], err);
         csv->values[made++] = column->values;
     }
     if (!failed && text_columns > 0)
-        failed = recording_note(base, err, "%zu columns hold text, not numbers, and are left out",
+        failed = recording_note(base, err, "columns of text, not numbers, are left out: %zu",
                                 text_columns);
     if (!failed && made == 0)
         failed = err_set(err, ERR_FORMAT, "%s: no column of numbers", base->info.path);
@@ -289,16 +290,16 @@ static int note_rows(struct csv *csv, struct err *err)
                        base->info.path, columns->first_backwards_line, columns->backwards);
     if (columns->backwards > 0)
         failed = recording_note(base, err,
-                                "%zu rows are earlier than the row before (first on line %zu) and "
-                                "are left out",
+                                "rows earlier than the row before are left out: %zu (first on line "
+                                "%zu)",
                                 columns->backwards, columns->first_backwards_line);
     if (!failed && columns->bad_times > 0)
         failed = recording_note(base, err,
-                                "%zu rows have no usable time (first on line %zu) and are left out",
+                                "rows without a usable time are left out: %zu (first on line %zu)",
                                 columns->bad_times, columns->first_bad_time_line);
     if (!failed && columns->odd_width > 0)
         failed = recording_note(base, err,
-                                "%zu rows have fewer or more fields than the first line (first on "
+                                "rows with fewer or more fields than the first line: %zu (first on "
                                 "line %zu)",
                                 columns->odd_width, columns->first_odd_width_line);
     return failed;

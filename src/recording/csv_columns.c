@@ -406,7 +406,7 @@ int csv_columns_read(const uint8_t *data, size_t size, const char *path, double 
     *out = (struct csv_columns){0};
     struct parsing parsing = {
         .out = out, .arena = arena, .path = path, .rate_hz = rate_hz, .line = 1, .err = err};
-    if (csv_init(&parser, 0) != 0)
+    if (csv_init(&parser, CSV_STRICT_FINI) != 0)
         return err_memory(err, path);
     bool gzip = size >= 2 && data[0] == 0x1F && data[1] == 0x8B;
     int failed =
