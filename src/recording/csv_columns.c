@@ -330,7 +330,11 @@ static int feed(struct parsing *parsing, struct csv_parser *parser, const char *
         const char *end = memchr(text + at, '\n', size - at);
         size_t length = end ? (size_t)(end - (text + at)) + 1 : size - at;
         if (csv_parse(parser, text + at, length, take_cell, take_row, parsing) != length)
-            return err_memory(parsing->err, parsing->path);
+            return csv_error(parser) == CSV_EPARSE
+                       ? err_set(parsing->err, ERR_FORMAT,
+                                 "%s:%zu: a quote (\") stands where none may", parsing->path,
+                                 parsing->line)
+                       : err_memory(parsing->err, parsing->path);
         parsing->line += end != NULL;
         at += length;
     }
@@ -406,7 +410,7 @@ int csv_columns_read(const uint8_t *data, size_t size, const char *path, double 
     *out = (struct csv_columns){0};
     struct parsing parsing = {
         .out = out, .arena = arena, .path = path, .rate_hz = rate_hz, .line = 1, .err = err};
-    if (csv_init(&parser, CSV_STRICT_FINI) != 0)
+    if (csv_init(&parser, CSV_STRICT | CSV_STRICT_FINI) != 0)
         return err_memory(err, path);
     bool gzip = size >= 2 && data[0] == 0x1F && data[1] == 0x8B;
     int failed =
