@@ -49,13 +49,23 @@ static size_t channels_by_role(const struct casefile *casefile, const struct der
     return count;
 }
 
+/* What to do when something is not there: a recording that cannot be read is then the news. */
+static const char *hint(const struct casefile *casefile, const char *otherwise)
+{
+    for (size_t i = 0; i < casefile->loaded_count; i++) {
+        if (casefile->loaded[i]->problem[0])
+            return casefile->loaded[i]->problem;
+    }
+    return otherwise;
+}
+
 static int choose_named(const struct casefile *casefile, const struct derivation *derivation,
                         const char *channel, struct request *request, struct err *err)
 {
     const struct trace *trace = casefile_channel_find(casefile, channel);
     if (!trace)
-        return err_set(err, ERR_NOT_FOUND, "no channel '%s'; `incisura inspect` lists them",
-                       channel);
+        return err_set(err, ERR_NOT_FOUND, "no channel '%s'; %s", channel,
+                       hint(casefile, "`incisura inspect` lists them"));
     if (derivation->role != ROLE_NONE && trace->times_ns)
         return err_set(err, ERR_USAGE, "%s: channel '%s' is an irregular trend, not a wave",
                        derivation->name, channel);

@@ -110,6 +110,14 @@ static char *search_beside(struct casefile *casefile, const struct stored_record
     return found;
 }
 
+static int changed(const char *path, struct err *err)
+{
+    return err_set(err, ERR_CONFLICT,
+                   "%s: changed since it was attached (its digest differs); put the original back, "
+                   "or attach the new file as another recording",
+                   path);
+}
+
 int locate_recording(struct casefile *casefile, const struct stored_recording *stored, char **path,
                      struct err *err)
 {
@@ -124,10 +132,13 @@ int locate_recording(struct casefile *casefile, const struct stored_recording *s
         return ERR_OK;
     }
     if (recording_state(stored->path, &size, &modified_ns, NULL) == ERR_OK)
-        return err_set(err, ERR_CONFLICT,
-                       "%s: changed since it was attached (its digest differs); put the original "
-                       "back, or attach the new file as another recording",
-                       stored->path);
+        return changed(stored->path, err);
+    char *beside = path_beside(casefile->path, path_name(stored->path));
+    bool there = beside && recording_state(beside, &size, &modified_ns, NULL) == ERR_OK;
+    int failed = there ? changed(beside, err) : ERR_OK;
+    free(beside);
+    if (failed)
+        return failed;
     return err_set(err, ERR_NOT_FOUND,
                    "%s: not there any more; put it back, or beside the case under any name",
                    stored->path);

@@ -44,6 +44,16 @@ static int named_path(const struct arguments *arguments, struct str *path, struc
     return ERR_OK;
 }
 
+static void tell_newer(const struct arguments *arguments, const struct store *store)
+{
+    if (store && store_newer(store))
+        (void)fprintf(
+            stderr,
+            "incisura %s: note: %s was made by a newer program; it is read as far as this "
+            "one understands it, and not changed\n",
+            arguments->command->name, store_path(store));
+}
+
 int command_open(const struct arguments *arguments, enum store_mode mode, struct casefile **out,
                  struct err *err)
 {
@@ -55,6 +65,8 @@ int command_open(const struct arguments *arguments, enum store_mode mode, struct
     if (!failed)
         failed =
             casefile_open(str_text(&path), mode, argument(arguments, "rater"), &options, out, err);
+    if (!failed)
+        tell_newer(arguments, casefile_store(*out));
     str_free(&path);
     return failed;
 }
@@ -65,6 +77,8 @@ int command_open_store(const struct arguments *arguments, struct store **out, st
     int failed = named_path(arguments, &path, err);
     if (!failed)
         failed = store_open(str_text(&path), STORE_READ, NULL, out, err);
+    if (!failed)
+        tell_newer(arguments, *out);
     str_free(&path);
     return failed;
 }

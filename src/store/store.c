@@ -140,7 +140,8 @@ static int check_kind(struct store *store, enum store_mode mode, struct err *err
         return err_set(err, ERR_FORMAT,
                        "%s: a database, but not a case; make one with `incisura start`",
                        store->path);
-    if (version > migration_count && mode == STORE_WRITE)
+    store->newer = version > migration_count;
+    if (store->newer && mode == STORE_WRITE)
         return err_set(err, ERR_NEWER,
                        "%s: made by a newer program (version %lld, this one knows %d): it can be "
                        "read, not changed; update incisura",
@@ -350,6 +351,11 @@ const char *store_path(const struct store *store)
 bool store_writable(const struct store *store)
 {
     return store->writable;
+}
+
+bool store_newer(const struct store *store)
+{
+    return store->newer;
 }
 
 static int update_epoch(struct store *store, int64_t epoch_civil_ns, struct err *err)

@@ -51,6 +51,8 @@ void store_close(struct store *store);
 const struct case_header *store_header(const struct store *store);
 const char *store_path(const struct store *store);
 bool store_writable(const struct store *store);
+/* Made by a newer program: it can be read as far as this one understands it. */
+bool store_newer(const struct store *store);
 
 /* Fixes the epoch, once; a second time is ERR_CONFLICT. */
 MUST_CHECK int store_epoch_fix(struct store *store, int64_t epoch_civil_ns, struct err *err);

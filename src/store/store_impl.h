@@ -15,7 +15,7 @@ enum { APPLICATION_ID = 0x494E4349 }; /* "INCI" */
 struct store {
     sqlite3 *db;
     char *path, *rater;
-    bool writable;
+    bool writable, newer;
     int64_t data_version;
     struct arena header_arena;
     struct case_header header;

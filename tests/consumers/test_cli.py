@@ -97,6 +97,22 @@ ok("start" in run("help").stdout and "--until" in run("mark", "--help").stdout,
    "help, and --help of a command")
 ok(run("help", "--man").stdout.startswith(".TH INCISURA 1"), "man page")
 
+# --- moved and changed recordings
+os.mkdir("moved")
+shutil.copy("c.case", "moved")
+os.rename("wave.csv", "moved/another-name.csv")
+r = run("derive", "moved/c", "channel", "--channel", "EDA", "--to", "+1")
+ok(r.returncode == 0 and len(r.stdout.splitlines()) == 251, "a moved recording is found by digest",
+   r.stderr)
+text = open("moved/another-name.csv").read()
+open("moved/wave.csv", "w").write(text.replace("2.000400", "9.000400"))
+os.remove("moved/another-name.csv")
+r = run("derive", "moved/c", "channel", "--channel", "EDA")
+ok(r.returncode == 2 and "wave.csv: changed since" in r.stderr, "a changed one is refused", r.stderr)
+r = run("marks", "moved/c")
+ok(r.returncode == 0 and "incision" in r.stdout, "and the marks are there all the same", r.stderr)
+open("wave.csv", "w").write(text)
+
 # --- tampering
 db = sqlite3.connect("c.case")
 db.execute("UPDATE marks SET onset_ns = onset_ns + 1 WHERE id = 2")
@@ -160,6 +176,9 @@ db = sqlite3.connect("c.case")
 db.execute("PRAGMA user_version = 1000")
 db.commit()
 db.close()
+r = run("marks", "c")
+ok(r.returncode == 0 and "incision" in r.stdout and "newer" in r.stderr,
+   "a case of a newer program is read, and told so", r.stderr)
 refused("change a case of a newer program", "newer", "mark", "c", "incision", "--at", "+1")
 shutil.copy("c.case", "cut.case")
 with open("cut.case", "r+b") as f:
