@@ -132,13 +132,18 @@ static int load_stored(struct casefile *casefile, const struct stored_recording 
     struct loaded *loaded = loaded_new(stored->id, stored->digest);
     if (!loaded)
         return err_memory(err, stored->path);
+    /* Texts of its own: those of the store's list go when a file is found elsewhere. */
     struct arena arena = {0};
+    struct stored_recording own = *stored;
+    own.path = arena_string(&arena, stored->path);
+    own.options = arena_string(&arena, stored->options);
     struct reader_options options = {0};
     struct err why = {0};
     char *path = NULL;
-    int failed = options_parse(stored->options, &arena, &options, &why);
+    int failed = own.path && own.options ? options_parse(own.options, &arena, &options, &why)
+                                         : err_memory(&why, "a recording");
     if (!failed)
-        failed = locate_recording(casefile, stored, &path, &why);
+        failed = locate_recording(casefile, &own, &path, &why);
     if (!failed)
         failed = load(casefile, loaded, path, &options, &why);
     free(path);
