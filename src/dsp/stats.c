@@ -70,3 +70,14 @@ double quantile(double *values, size_t count, double share)
         high = fmin(high, values[i]);
     return low + (at - (double)k) * (high - low);
 }
+
+void widen_extremes(const float *values, int64_t count, float *low, float *high)
+{
+    float least = *low, greatest = *high;
+    for (int64_t i = 0; i < count; i++) {
+        least = values[i] < least ? values[i] : least;
+        greatest = values[i] > greatest ? values[i] : greatest;
+    }
+    *low = least;
+    *high = greatest;
+}

@@ -12,6 +12,7 @@
 
 #include "base/array.h"
 #include "base/str.h"
+#include "dsp/stats.h"
 #include "recording/reader.h"
 
 enum { HEAD_SIZE = 4096, SCAN_STEP = 4096, WHY_SIZE = 160 };
@@ -239,10 +240,7 @@ static int scan_minmax(const struct recording *recording, size_t channel, int64_
         int failed = recording->ops->read(recording, channel, first, step, piece, err);
         if (failed)
             return failed;
-        for (int64_t i = 0; i < step; i++) {
-            least = piece[i] < least ? piece[i] : least;
-            greatest = piece[i] > greatest ? piece[i] : greatest;
-        }
+        widen_extremes(piece, step, &least, &greatest);
         first += step;
         count -= step;
     }

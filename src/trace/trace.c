@@ -9,6 +9,7 @@
 #include <string.h>
 
 #include "base/array.h"
+#include "dsp/stats.h"
 
 enum { SCAN_STEP = 4096 };
 
@@ -40,10 +41,7 @@ static int scan_minmax(const struct trace *trace, int64_t first, int64_t count, 
         int failed = trace->ops->read(trace, first, step, piece, err);
         if (failed)
             return failed;
-        for (int64_t i = 0; i < step; i++) {
-            least = piece[i] < least ? piece[i] : least;
-            greatest = piece[i] > greatest ? piece[i] : greatest;
-        }
+        widen_extremes(piece, step, &least, &greatest);
         first += step;
         count -= step;
     }
