@@ -138,7 +138,7 @@ static void put_shortest(struct str *str, double value, int first, int last, boo
  * trailing zeros dropped. Returns the length. */
 static size_t put_digits(char *out, bool negative, uint64_t digits, int decimals)
 {
-    char reversed[24];
+    char reversed[24] = {0};
     size_t count = 0, length = 0;
     for (; decimals > 0 && digits % 10 == 0; decimals--)
         digits /= 10;

@@ -40,7 +40,7 @@ struct export_job {
     const struct recipe *recipe;
     const struct export_signal *signals; /* shape (recipe->signal_count) */
     const struct selection *selection;
-    const char *const *times; /* t_s of each sample as text, shape (recipe->samples) */
+    const char *const *times;        /* t_s of each sample as text, shape (recipe->samples) */
     const struct left_out *left_out; /* complete only when writers' end() is called */
     size_t left_out_count;
 };

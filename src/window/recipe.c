@@ -1,5 +1,6 @@
 /*
- * recipe.c - reading a recipe by inih. Cuts nothing.
+ * recipe.c - reading a recipe by inih: [events] and [window], and the whole. Signals are
+ * recipe_signals.c's. Cuts nothing.
  */
 #include "window/recipe.h"
 
@@ -9,35 +10,11 @@
 #include <stdlib.h>
 #include <string.h>
 
-#include "base/arena.h"
 #include "base/array.h"
 #include "base/str.h"
+#include "window/recipe_impl.h"
 
-enum { SIGNAL_WORDS = 40, PARAMETERS = 32 };
-
-struct owned {
-    struct recipe recipe; /* first: recipe_free() finds the rest */
-    struct arena arena;
-    const char **codes;
-    size_t code_room;
-    struct recipe_exclusion *exclusions;
-    size_t exclusion_room;
-    struct recipe_signal *signals;
-    size_t signal_room;
-};
-
-struct reading {
-    struct owned *owned;
-    const struct codebook *codebook;
-    const char *at, *end; /* what inih has not asked for yet */
-    int line;
-    bool seen[16];
-    char value[256]; /* of the line that is being read, trimmed, writable */
-    int failed;
-    struct err *err;
-};
-
-static int refuse(struct reading *reading, const char *key, const char *value, const char *why)
+int recipe_refuse(struct reading *reading, const char *key, const char *value, const char *why)
 {
     return err_set(reading->err, ERR_FORMAT, "%s:%d: %s = %.80s: %s", reading->owned->recipe.name,
                    reading->line, key, value, why);
@@ -89,7 +66,7 @@ static int known_code(struct reading *reading, const char *key, const char *code
 {
     return codebook_find(reading->codebook, code)
                ? ERR_OK
-               : refuse(reading, key, code, "no such code in the case's codebook");
+               : recipe_refuse(reading, key, code, "no such code in the case's codebook");
 }
 
 static int take_codes(struct reading *reading, const char *key, char *value)
@@ -119,8 +96,9 @@ static int take_states(struct reading *reading, const char *key, char *value)
     for (char *item; (item = next_item(&value));) {
         enum mark_state state;
         if (!mark_state_from_name(item, &state))
-            return refuse(reading, key, item,
-                          "no such state; states are incomplete, marked, confirmed, rejected");
+            return recipe_refuse(
+                reading, key, item,
+                "no such state; states are incomplete, marked, confirmed, rejected");
         reading->owned->recipe.states[state] = true;
     }
     return ERR_OK;
@@ -131,7 +109,7 @@ static int take_first(struct reading *reading, const char *key, char *value)
     reading->owned->recipe.first = ascii_equal(value, "yes");
     if (reading->owned->recipe.first || ascii_equal(value, "no"))
         return ERR_OK;
-    return refuse(reading, key, value, "write yes or no");
+    return recipe_refuse(reading, key, value, "write yes or no");
 }
 
 /* A span of no less than 0, into *out. */
@@ -139,7 +117,7 @@ static int take_span(struct reading *reading, const char *key, const char *value
 {
     return parse_span(value, out) && *out >= 0
                ? ERR_OK
-               : refuse(reading, key, value, "write seconds, 0 or more: 60");
+               : recipe_refuse(reading, key, value, "write seconds, 0 or more: 60");
 }
 
 static int take_distance(struct reading *reading, const char *key, char *value)
@@ -154,14 +132,15 @@ static int take_not_within(struct reading *reading, const char *key, char *value
     struct recipe_exclusion made = {0};
     char *of = strstr(value, " of ");
     if (!of)
-        return refuse(reading, key, value, "write -120..60 of CODE");
+        return recipe_refuse(reading, key, value, "write -120..60 of CODE");
     *of = '\0';
     char *code = trim(of + 4);
     int failed = known_code(reading, key, code);
     if (failed)
         return failed;
     if (!parse_range(value, &made.from_ns, &made.to_ns) || made.from_ns > made.to_ns)
-        return refuse(reading, key, value, "write -120..60 of CODE, from the smaller number up");
+        return recipe_refuse(reading, key, value,
+                             "write -120..60 of CODE, from the smaller number up");
     made.code = arena_string(&owned->arena, code);
     if (!made.code)
         return err_memory(reading->err, "a recipe");
@@ -198,7 +177,7 @@ static int take_rate(struct reading *reading, const char *key, char *value)
     double *out = &reading->owned->recipe.rate_hz;
     return number_parse(trim(value), out) && *out >= 0.001 && *out <= 100000
                ? ERR_OK
-               : refuse(reading, key, value, "write samples a second: 4");
+               : recipe_refuse(reading, key, value, "write samples a second: 4");
 }
 
 static bool baseline_word(struct recipe *recipe, const char *word)
@@ -228,12 +207,12 @@ static int take_baseline(struct reading *reading, const char *key, char *value)
     char *words = value, *range = strsep(&words, " \t");
     for (char *word; (word = strsep(&words, " \t"));) {
         if (*word && !baseline_word(recipe, word))
-            return refuse(reading, key, word, how);
+            return recipe_refuse(reading, key, word, how);
     }
     recipe->has_baseline = true;
     if (!parse_range(range, &recipe->baseline_from_ns, &recipe->baseline_to_ns) ||
         recipe->baseline_from_ns >= recipe->baseline_to_ns)
-        return refuse(reading, key, range, how);
+        return recipe_refuse(reading, key, range, how);
     return ERR_OK;
 }
 
@@ -248,129 +227,7 @@ static int take_valid(struct reading *reading, const char *key, char *value)
         *out /= 100;
     return good && *out >= 0 && *out <= 1
                ? ERR_OK
-               : refuse(reading, key, value, "write a share from 0 to 1: 0.8");
-}
-
-/* ---- [signals] ---- */
-
-static bool name_valid(const char *name)
-{
-    for (const char *c = name; *c; c++) {
-        if (!isalnum((unsigned char)*c) && !strchr("_-.", *c))
-            return false;
-    }
-    return isalpha((unsigned char)*name);
-}
-
-/* The next blank-separated word; quotes keep blanks. Moves *text; NULL at the end, or on a quote
- * that is not closed (*open). */
-static char *next_word(char **text, bool *quoted, bool *open)
-{
-    char *from = *text + strspn(*text, " \t");
-    if (!*from)
-        return NULL;
-    *quoted = *from == '"';
-    char *end = *quoted ? strchr(from + 1, '"') : from + strcspn(from, " \t");
-    *open = *quoted && !end;
-    if (!end)
-        return NULL;
-    from += *quoted;
-    *text = *end ? end + 1 : end;
-    *end = '\0';
-    return from;
-}
-
-static int check_settings(struct reading *reading, const char *key,
-                          const struct recipe_signal *signal)
-{
-    double values[PARAMETERS];
-    struct err why = {0};
-    if (derivation_parameter_count(signal->derivation) > PARAMETERS)
-        return refuse(reading, key, signal->derivation->name, "has too many parameters");
-    if (derivation_parameters(signal->derivation, signal->settings, signal->setting_count, values,
-                              &why) == ERR_OK)
-        return ERR_OK;
-    return err_set(reading->err, ERR_FORMAT, "%s:%d: %s: %s", reading->owned->recipe.name,
-                   reading->line, key, why.text);
-}
-
-static int unknown_derivation(struct reading *reading, const char *key, const char *name)
-{
-    struct str list = {0};
-    str_put(&list, "no such derivation; there are");
-    for (size_t i = 0; derivations[i]; i++)
-        str_putf(&list, "%s %s", i ? "," : "", derivations[i]->name);
-    int failed = refuse(reading, key, name, str_text(&list));
-    str_free(&list);
-    return failed;
-}
-
-static int split_signal(struct reading *reading, const char *key, char *value,
-                        struct recipe_signal *out)
-{
-    struct arena *arena = &reading->owned->arena;
-    const char **settings = arena_alloc(arena, SIGNAL_WORDS, sizeof *settings);
-    bool quoted, open = false;
-    if (!settings)
-        return err_memory(reading->err, "a recipe");
-    char *word = next_word(&value, &quoted, &open);
-    out->derivation = word ? derivation_find(word) : NULL;
-    if (!out->derivation)
-        return unknown_derivation(reading, key, word ? word : "");
-    while ((word = next_word(&value, &quoted, &open))) {
-        char *copy = arena_string(arena, word);
-        if (!copy)
-            return err_memory(reading->err, "a recipe");
-        if (quoted && !out->channel)
-            out->channel = copy;
-        else if (!quoted && strchr(word, '=') && out->setting_count < SIGNAL_WORDS)
-            settings[out->setting_count++] = copy;
-        else
-            return refuse(reading, key, word,
-                          "write DERIVATION \"CHANNEL\" parameter=value, the channel in quotes");
-    }
-    out->settings = settings;
-    return open ? refuse(reading, key, value, "a quote is opened and not closed") : ERR_OK;
-}
-
-static int check_signal(struct reading *reading, const char *key,
-                        const struct recipe_signal *signal)
-{
-    const struct recipe *recipe = &reading->owned->recipe;
-    const char *method = signal->derivation->name;
-    for (size_t i = 0; i < recipe->signal_count; i++) {
-        if (strcmp(reading->owned->signals[i].name, key) == 0)
-            return refuse(reading, key, method, "this name is given twice");
-    }
-    if (signal->derivation->kind != DERIVES_TRACE)
-        return refuse(reading, key, method,
-                      "an event train, not a trace; it has no value at every instant");
-    if (signal->derivation->role == ROLE_NONE && !signal->derivation->needs_train &&
-        !signal->channel)
-        return refuse(reading, key, method, "needs a channel: write its name in quotes");
-    return check_settings(reading, key, signal);
-}
-
-static int take_signal(struct reading *reading, const char *key, char *value)
-{
-    struct owned *owned = reading->owned;
-    struct recipe_signal made = {.line = reading->line};
-    if (!name_valid(key))
-        return refuse(reading, key, value,
-                      "a signal's name begins with a letter and has letters, digits, _ - .");
-    int failed = split_signal(reading, key, value, &made);
-    if (!failed)
-        failed = check_signal(reading, key, &made);
-    made.name = failed ? NULL : arena_string(&owned->arena, key);
-    if (!failed && !made.name)
-        failed = err_memory(reading->err, "a recipe");
-    if (!failed)
-        failed =
-            array_reserve((void **)&owned->signals, &owned->signal_room,
-                          owned->recipe.signal_count + 1, sizeof *owned->signals, reading->err);
-    if (!failed)
-        owned->signals[owned->recipe.signal_count++] = made;
-    return failed;
+               : recipe_refuse(reading, key, value, "write a share from 0 to 1: 0.8");
 }
 
 /* ---- the whole ---- */
@@ -408,7 +265,7 @@ static int unknown_key(struct reading *reading, const char *section, const char 
         if (strcmp(keys[i].section, section) == 0)
             str_putf(&list, " %s", keys[i].name);
     }
-    int failed = refuse(reading, name, value, str_text(&list));
+    int failed = recipe_refuse(reading, name, value, str_text(&list));
     str_free(&list);
     return failed;
 }
@@ -418,16 +275,16 @@ static int take_key(struct reading *reading, const char *section, const char *na
 {
     size_t length = strlen(value);
     if (length >= sizeof reading->value)
-        return refuse(reading, name, value, "too long");
+        return recipe_refuse(reading, name, value, "too long");
     memcpy(reading->value, value, length + 1);
     char *trimmed = trim(reading->value);
     if (strcmp(section, "signals") == 0)
-        return take_signal(reading, name, trimmed);
+        return recipe_take_signal(reading, name, trimmed);
     for (size_t i = 0; i < KEYS; i++) {
         if (strcmp(keys[i].section, section) != 0 || strcmp(keys[i].name, name) != 0)
             continue;
         if (reading->seen[i] && !keys[i].many)
-            return refuse(reading, name, trimmed, "is given twice");
+            return recipe_refuse(reading, name, trimmed, "is given twice");
         reading->seen[i] = true;
         return keys[i].take(reading, name, trimmed);
     }
