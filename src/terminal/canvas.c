@@ -71,10 +71,11 @@ static uint32_t shown(uint32_t code)
 int canvas_text(struct canvas *canvas, int row, int column, int limit, enum ink ink,
                 const char *text)
 {
-    int end = limit < 0 || limit > canvas->columns ? canvas->columns : limit;
+    int end = limit < 0 || limit > canvas->columns ? canvas->columns : limit, first = column;
     while (*text) {
         if (column >= end) {
-            if (limit >= 0 && end > 0)
+            /* Only over text of its own: what stands before belongs to someone else. */
+            if (limit >= 0 && end > first)
                 canvas_put(canvas, row, end - 1, 0x2026, ink);
             return end > column ? end : column;
         }

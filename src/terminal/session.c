@@ -39,7 +39,7 @@ struct session {
 static int signal_pipe[2] = {-1, -1};
 static struct termios terminal_before;
 
-static const int caught[] = {SIGWINCH, SIGTERM, SIGHUP, SIGINT};
+static const int caught[] = {SIGWINCH, SIGTERM, SIGHUP, SIGINT, SIGTSTP};
 static const int crashes[] = {SIGSEGV, SIGBUS, SIGABRT, SIGFPE, SIGILL};
 
 static void on_signal(int number)
@@ -190,11 +190,12 @@ void session_repaint(struct session *session)
     session->painter.fresh = true;
 }
 
-/* ^Z: hands the terminal back, sleeps until told to go on, takes it over again. */
+/* ^Z, or SIGTSTP from outside: hands the terminal back, sleeps until told to go on, takes it over
+ * again. Stops by SIGSTOP, as SIGTSTP is what brought us here. */
 static void suspend(struct session *session, struct event *out)
 {
     (void)endwin();
-    (void)raise(SIGTSTP);
+    (void)raise(SIGSTOP);
     (void)reset_prog_mode();
     (void)clearok(curscr, TRUE);
     (void)refresh();
@@ -280,11 +281,14 @@ static void take_signals(struct session *session, struct event *out)
 {
     char numbers[64];
     ssize_t count = read(signal_pipe[0], numbers, sizeof numbers);
-    out->kind = EVENT_RESIZE;
+    bool end = false, stop = false;
     for (ssize_t i = 0; i < count; i++) {
-        if (numbers[i] != SIGWINCH)
-            out->kind = EVENT_END;
+        stop |= numbers[i] == SIGTSTP;
+        end |= numbers[i] != SIGWINCH && numbers[i] != SIGTSTP;
     }
+    if (stop && !end)
+        suspend(session, out);
+    out->kind = end ? EVENT_END : EVENT_RESIZE;
     read_size(session);
     (void)resizeterm(session->rows, session->columns);
     session_repaint(session);
@@ -341,5 +345,7 @@ int session_show(struct session *session, const struct canvas *canvas, struct er
     int failed = painter_paint(&session->painter, canvas, &session->bytes, err);
     if (!failed && session->bytes.length > 0)
         failed = write_all(session->bytes.text, session->bytes.length, err);
+    if (failed)
+        session_repaint(session); /* what is on the screen now is anybody's guess */
     return failed;
 }

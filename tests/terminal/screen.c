@@ -8,6 +8,7 @@
 #include <signal.h>
 #include <stdio.h>
 #include <stdlib.h>
+#include <termios.h>
 #include <string.h>
 #include <sys/ioctl.h>
 #include <sys/wait.h>
@@ -46,8 +47,9 @@ struct screen *screen_start(int rows, int columns, const char *const *argv)
         abort();
     screen->program = forkpty(&screen->terminal, NULL, NULL, &size);
     if (screen->program == 0) {
-        (void)setenv("TERM", "xterm-256color", 1);
-        (void)setenv("LC_ALL", "C.UTF-8", 1);
+        const char *term = getenv("SCREEN_TERM"), *locale = getenv("SCREEN_LOCALE");
+        (void)setenv("TERM", term ? term : "xterm-256color", 1);
+        (void)setenv("LC_ALL", locale ? locale : "C.UTF-8", 1);
         (void)execv(argv[0], (char *const *)argv);
         _exit(127);
     }
@@ -118,6 +120,13 @@ void screen_resize(struct screen *screen, int rows, int columns)
     screen->rows = rows;
     screen->columns = columns;
     (void)ioctl(screen->terminal, TIOCSWINSZ, &size);
+}
+
+bool screen_cooked(const struct screen *screen)
+{
+    struct termios modes;
+    return tcgetattr(screen->terminal, &modes) == 0 && (modes.c_lflag & ICANON) &&
+           (modes.c_lflag & ECHO);
 }
 
 void screen_signal(struct screen *screen, int number)

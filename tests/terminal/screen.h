@@ -11,7 +11,7 @@
 struct screen;
 
 /* Starts the program, argv[0] its path, on a terminal of this size. Ends the test when it cannot.
- */
+ * SCREEN_TERM and SCREEN_LOCALE in the environment stand for xterm-256color and C.UTF-8. */
 struct screen *screen_start(int rows, int columns, const char *const *argv);
 
 /* Types text as it is; presses a key that has a name. */
@@ -27,6 +27,8 @@ bool screen_loses(struct screen *screen, const char *text);
 const char *screen_row(struct screen *screen, int row);
 /* Is the program on the alternate screen? */
 bool screen_taken(const struct screen *screen);
+/* Is the terminal in its ordinary mode: lines, echo? */
+bool screen_cooked(const struct screen *screen);
 
 /* Waits until the program ends; its exit status, -1 when it does not end or was killed. Frees. */
 int screen_end(struct screen *screen);
