@@ -122,13 +122,6 @@ void screen_resize(struct screen *screen, int rows, int columns)
     (void)ioctl(screen->terminal, TIOCSWINSZ, &size);
 }
 
-bool screen_cooked(const struct screen *screen)
-{
-    struct termios modes;
-    return tcgetattr(screen->terminal, &modes) == 0 && (modes.c_lflag & ICANON) &&
-           (modes.c_lflag & ECHO);
-}
-
 void screen_signal(struct screen *screen, int number)
 {
     (void)kill(screen->program, number);
@@ -200,9 +193,33 @@ bool screen_loses(struct screen *screen, const char *text)
     return wait_until(screen, text, false);
 }
 
+bool screen_left(struct screen *screen)
+{
+    int64_t end = now_ms() + PATIENCE_MS;
+    while (screen->taken) {
+        int64_t left = end - now_ms();
+        if (left <= 0 || !take_in(screen, (int)left))
+            break;
+    }
+    return !screen->taken;
+}
+
 bool screen_taken(const struct screen *screen)
 {
     return screen->taken;
+}
+
+bool screen_cooked(const struct screen *screen)
+{
+    struct termios modes;
+    const tcflag_t ordinary = ICANON | ECHO;
+    int64_t end = now_ms() + PATIENCE_MS;
+    do {
+        if (tcgetattr(screen->terminal, &modes) == 0 && (modes.c_lflag & ordinary) == ordinary)
+            return true;
+        (void)poll(NULL, 0, 5);
+    } while (now_ms() < end);
+    return false;
 }
 
 int screen_end(struct screen *screen)

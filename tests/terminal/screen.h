@@ -27,7 +27,9 @@ bool screen_loses(struct screen *screen, const char *text);
 const char *screen_row(struct screen *screen, int row);
 /* Is the program on the alternate screen? */
 bool screen_taken(const struct screen *screen);
-/* Is the terminal in its ordinary mode: lines, echo? */
+/* Waits until it has left the alternate screen. */
+bool screen_left(struct screen *screen);
+/* Waits until the terminal is in its ordinary mode: lines, echo. */
 bool screen_cooked(const struct screen *screen);
 
 /* Waits until the program ends; its exit status, -1 when it does not end or was killed. Frees. */
