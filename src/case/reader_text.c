@@ -1,6 +1,6 @@
 /*
- * reader_text.c - what a reader was told (rate, units, roles) as text in the store, and back, so
- * that a recording opens the same way each time.
+ * reader_text.c - what a reader was told (rate, start, units, roles) as text in the store, and
+ * back, so that a recording opens the same way each time.
  */
 #include <string.h>
 
@@ -20,6 +20,8 @@ int options_text(const struct reader_options *options, struct str *out, struct e
         str_put_double(out, options->rate_hz);
         str_putc(out, '\n');
     }
+    if (options->start_civil_ns != 0)
+        str_putf(out, "start=%lld\n", (long long)options->start_civil_ns);
     put_list(out, "unit", options->units, options->unit_count);
     put_list(out, "role", options->roles, options->role_count);
     return str_failed(out) ? err_memory(err, "reader options") : ERR_OK;
@@ -54,13 +56,17 @@ int options_parse(const char *text, struct arena *arena, struct reader_options *
                   struct err *err)
 {
     struct reader_options made = {0};
-    const char *const *rates;
-    size_t rate_count;
+    const char *const *rates, *const *starts;
+    size_t rate_count, start_count;
     int failed = take_list(text, "rate", arena, &rates, &rate_count, err);
     if (!failed)
         failed = take_list(text, "unit", arena, &made.units, &made.unit_count, err);
     if (!failed)
         failed = take_list(text, "role", arena, &made.roles, &made.role_count, err);
+    if (!failed)
+        failed = take_list(text, "start", arena, &starts, &start_count, err);
+    if (!failed && start_count > 0 && !integer_parse(starts[0], &made.start_civil_ns))
+        failed = err_set(err, ERR_FORMAT, "stored start '%s' is not a number", starts[0]);
     if (!failed && rate_count > 0 && !number_parse(rates[0], &made.rate_hz))
         failed = err_set(err, ERR_FORMAT, "stored rate '%s' is not a number", rates[0]);
     if (!failed)

@@ -97,7 +97,12 @@ const struct command command_start = {
 };
 
 static const struct option_spec attach_options[] = {
-    OPTION_RATE, OPTION_UNIT, OPTION_ROLE, OPTION_RATER, {0},
+    {"start", "TIME", false, "when a file that does not say it starts: 2031-05-20T09:00:00"},
+    OPTION_RATE,
+    OPTION_UNIT,
+    OPTION_ROLE,
+    OPTION_RATER,
+    {0},
 };
 
 static int attach_one(struct casefile *casefile, const char *path,

@@ -24,6 +24,14 @@ int command_reader_options(const struct arguments *arguments, struct reader_opti
     const char *rate = argument(arguments, "rate");
     if (rate && (!number_parse(rate, &made.rate_hz) || made.rate_hz <= 0))
         return err_set(err, ERR_USAGE, "--rate '%s' is not a number of samples a second", rate);
+    const char *start = argument(arguments, "start");
+    struct time_arg time;
+    if (start && (!iso_parse(start, &time) || time.kind != TIME_ARG_CIVIL))
+        return err_set(err, ERR_USAGE,
+                       "--start '%s' is not a date and time of the theatre's wall clock: "
+                       "2031-05-20T09:00:00",
+                       start);
+    made.start_civil_ns = start ? time.ns : 0;
     made.units = argument_all(arguments, "unit", &made.unit_count);
     made.roles = argument_all(arguments, "role", &made.role_count);
     *out = made;

@@ -110,11 +110,26 @@ static int make_unique(struct recording *recording, size_t index, struct err *er
                    recording->info.path, label);
 }
 
+static int set_start(struct recording *recording, const struct reader_options *options,
+                     struct err *err)
+{
+    char start[TIME_TEXT_SIZE];
+    if (options->start_civil_ns == 0)
+        return ERR_OK;
+    if (recording->info.start_civil_ns == NS_NONE) {
+        recording->info.start_civil_ns = options->start_civil_ns;
+        return ERR_OK;
+    }
+    ns_format_civil(recording->info.start_civil_ns, start);
+    return err_set(err, ERR_USAGE, "%s: says itself that it starts at %s; leave --start away",
+                   recording->info.path, start);
+}
+
 static int finish(struct recording *recording, const struct reader_options *options,
                   struct err *err)
 {
     size_t units = 0, roles = 0;
-    int failed = ERR_OK;
+    int failed = set_start(recording, options, err);
     for (size_t i = 0; i < recording->info.channel_count && !failed; i++) {
         struct channel *channel = &recording->channels[i];
         failed = make_unique(recording, i, err);
@@ -166,6 +181,8 @@ static int choose_by_head(const char *path, const struct file_space *files,
 int recording_open(const char *path, const struct reader_options *options, struct recording **out,
                    struct err *err)
 {
+    static const struct reader_options nothing = {0};
+    options = options ? options : &nothing;
     const struct file_space *files = options->files ? options->files : &disk_files;
     const struct reader *reader;
     struct recording *made = NULL;

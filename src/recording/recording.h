@@ -79,10 +79,11 @@ struct reader_options {
     size_t unit_count;
     const char *const *roles; /* "LABEL=ROLE" texts, shape (role_count) */
     size_t role_count;
+    int64_t start_civil_ns;         /* when a file that does not say it starts; 0 = not known */
     const struct file_space *files; /* NULL = disk_files */
 };
 
-/* Opens any known format. On failure *out is untouched. */
+/* Opens any known format; `options` NULL = the usual case. On failure *out is untouched. */
 MUST_CHECK int recording_open(const char *path, const struct reader_options *options,
                               struct recording **out, struct err *err);
 void recording_close(struct recording *recording);

@@ -97,6 +97,18 @@ ok("start" in run("help").stdout and "--until" in run("mark", "--help").stdout,
    "help, and --help of a command")
 ok(run("help", "--man").stdout.startswith(".TH INCISURA 1"), "man page")
 
+# --- a recording that does not say when it starts
+open("plain.csv", "w").write("lead\n" + "".join(f"{k % 7}\n" for k in range(1000)))
+done("start of a case without a clock", "start", "p.case", "--rater", "KM")
+refused("a start that is no date", "--start", "attach", "p", "plain.csv", "--rate", "100", "--start", "9")
+refused("a start for a file that says its own", "says itself", "attach", "p", "wave.csv", "--start",
+        "2031-05-20T09:00:00")
+done("attach with what the file lacks", "attach", "p", "plain.csv", "--rate", "100", "--start",
+     "2031-05-20T09:00:00", "--role", "lead=ecg", "--unit", "lead=mV")
+done("and then times of day work", "mark", "p", "incision", "--at", "09:00:02")
+r = run("derive", "p", "channel", "--channel", "lead", "--from", "09:00:01", "--to", "09:00:01.02")
+ok(r.stdout == "t_s,lead\n1,2\n1.01,3\n", "what was told is kept with the case", r.stdout + r.stderr)
+
 # --- moved and changed recordings
 os.mkdir("moved")
 shutil.copy("c.case", "moved")
