@@ -3,6 +3,7 @@
  */
 #include <locale.h>
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
 
 #include "base/version.h"
@@ -34,9 +35,24 @@ static const struct command *find(const char *name)
     return NULL;
 }
 
+/* Characters alone: numbers keep their decimal point. Where nothing is said about the locale, as on
+ * a bare system, the terminal is taken to show UTF-8, which nearly all do; LC_ALL=C says otherwise.
+ */
+static void set_characters(void)
+{
+    static const char *const said_by[] = {"LC_ALL", "LC_CTYPE", "LANG"};
+    bool said = false;
+    for (size_t i = 0; i < sizeof said_by / sizeof *said_by; i++) {
+        const char *value = getenv(said_by[i]);
+        said |= value && *value;
+    }
+    /* A locale that is not installed leaves plain ASCII. */
+    (void)setlocale(LC_CTYPE, said ? "" : "C.UTF-8");
+}
+
 int main(int count, char **words)
 {
-    (void)setlocale(LC_CTYPE, "");
+    set_characters();
     const char *name = count > 1 ? words[1] : "help";
     if (strcmp(name, "--version") == 0) {
         (void)printf("incisura %s\n", INCISURA_VERSION);

@@ -11,7 +11,6 @@
 #include <errno.h>
 #include <fcntl.h>
 #include <langinfo.h>
-#include <locale.h>
 #include <poll.h>
 #include <signal.h>
 #include <stdlib.h>
@@ -141,8 +140,6 @@ int session_open(struct session **out, struct err *err)
     if (!isatty(STDIN_FILENO) || !isatty(STDOUT_FILENO) ||
         tcgetattr(STDIN_FILENO, &terminal_before) < 0)
         return err_set(err, ERR_USAGE, "needs a terminal for input and output");
-    /* Characters alone: numbers keep their decimal point. */
-    (void)setlocale(LC_CTYPE, "");
     struct session *made = calloc(1, sizeof *made);
     if (!made)
         return err_memory(err, "the terminal");
