@@ -105,7 +105,7 @@ help:
 	@echo 'make            build build/incisura'
 	@echo 'make demo       install what is missing, build, make a demo case and open it'
 	@echo 'make test       install what tests need and run them all'
-	@echo 'make bench      measure speed against plain loops and scipy'
+	@echo 'make bench      measure speed against a plain loop over the same samples'
 	@echo 'make fuzz       run every fuzzer for FUZZ_SECONDS (60)'
 	@echo 'make asan       build/asan/incisura, with AddressSanitizer and UBSan'
 	@echo 'make lint       cppcheck and clang-format, no changes;  make format  changes'
@@ -127,7 +127,7 @@ demo-case: build build/theatre
 	@demo/prepare
 
 demo: packages
-	@$(MAKE) demo-case
+	@$(MAKE) -j$$(nproc) demo-case
 	@demo/open
 
 # --- tests ------------------------------------------------------------------------------------
