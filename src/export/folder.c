@@ -14,6 +14,7 @@
 
 #include "base/file.h"
 #include "base/str.h"
+#include "export/writer.h"
 
 static char *join(const char *folder, const char *name)
 {
@@ -25,30 +26,43 @@ static char *join(const char *folder, const char *name)
     return NULL;
 }
 
-/* Files only: the program makes no folders inside an export. */
+/* Only what writers write. A file that somebody put there meanwhile stays, and its folder too. */
 static void remove_folder(const char *path)
 {
-    DIR *listing = opendir(path);
-    for (struct dirent *entry; listing && (entry = readdir(listing));) {
-        char *file = join(path, entry->d_name);
-        if (file && entry->d_name[0] != '.')
+    for (size_t i = 0; writers[i]; i++) {
+        char *file = join(path, writers[i]->file);
+        if (file)
             (void)unlink(file);
         free(file);
     }
-    if (listing)
-        (void)closedir(listing);
     (void)rmdir(path);
 }
 
-static bool is_empty(const char *path)
+static bool is_written(const char *name)
+{
+    for (size_t i = 0; writers[i]; i++) {
+        if (strcmp(writers[i]->file, name) == 0)
+            return true;
+    }
+    return strcmp(name, ".") == 0 || strcmp(name, "..") == 0;
+}
+
+/* Refuses a folder that holds anything but an export's files; *empty = it holds none of them. */
+static int check_entries(const char *path, bool *empty, struct err *err)
 {
     DIR *listing = opendir(path);
-    bool empty = listing != NULL;
-    for (struct dirent *entry; listing && (entry = readdir(listing));)
-        empty &= strcmp(entry->d_name, ".") == 0 || strcmp(entry->d_name, "..") == 0;
+    int failed = listing ? ERR_OK : err_errno(err, path, "list it");
+    *empty = true;
+    for (struct dirent *entry; !failed && (entry = readdir(listing));) {
+        *empty &= entry->d_name[0] == '.';
+        if (!is_written(entry->d_name))
+            failed = err_set(err, ERR_CONFLICT,
+                             "%s: holds %s, which no export wrote; move it or name another folder",
+                             path, entry->d_name);
+    }
     if (listing)
         (void)closedir(listing);
-    return empty;
+    return failed;
 }
 
 /* May the target be replaced? */
@@ -59,13 +73,27 @@ static int check_target(const char *path, struct err *err)
         return errno == ENOENT ? ERR_OK : err_errno(err, path, "look at it");
     if (!S_ISDIR(state.st_mode))
         return err_set(err, ERR_CONFLICT, "%s: is a file; name a folder", path);
+    bool empty;
+    int failed = check_entries(path, &empty, err);
+    if (failed || empty)
+        return failed;
     char *provenance = join(path, "provenance.json");
-    bool earlier = provenance && access(provenance, F_OK) == 0;
+    bool earlier = provenance && provenance_is_ours(provenance);
     free(provenance);
-    if (earlier || is_empty(path))
-        return ERR_OK;
-    return err_set(err, ERR_CONFLICT,
-                   "%s: holds files that are no earlier export; name another folder", path);
+    return earlier
+               ? ERR_OK
+               : err_set(err, ERR_CONFLICT,
+                         "%s: holds files that are no earlier export; name another folder", path);
+}
+
+/* Where the folder really is, so that a link to it is kept; without slashes at the end. */
+static char *real_path(const char *path)
+{
+    char *real = realpath(path, NULL);
+    size_t length = strlen(path);
+    while (length > 1 && path[length - 1] == '/')
+        length--;
+    return real ? real : strndup(path, length);
 }
 
 int folder_open(struct folder *folder, const char *path, struct err *err)
@@ -75,12 +103,8 @@ int folder_open(struct folder *folder, const char *path, struct err *err)
     int failed = check_target(path, err);
     if (failed)
         return failed;
-    size_t length = strlen(path);
-    while (length > 1 && path[length - 1] == '/')
-        length--;
-    made.path = strndup(path, length);
-    str_put_n(&name, path, length);
-    str_put(&name, ".part-XXXXXX");
+    made.path = real_path(path);
+    str_putf(&name, "%s.part-XXXXXX", made.path ? made.path : "");
     if (!made.path || str_failed(&name))
         failed = err_memory(err, path);
     else if (!mkdtemp(name.text))

@@ -2,8 +2,9 @@
  * folder.h - a folder that appears whole or not at all, and replaces an earlier one whole.
  *
  * Files are written into a new folder beside the target; folder_commit() syncs it and exchanges
- * the two in one step. A target that exists is only replaced when it is an earlier export (it
- * holds provenance.json), an empty folder, or nothing.
+ * the two in one step. A target that exists is only replaced when it is an empty folder, or an
+ * earlier export and nothing else: the program's own provenance.json, and no file that no writer
+ * writes. A script that an analyst keeps among the tables is refused, not removed.
  */
 #ifndef EXPORT_FOLDER_H
 #define EXPORT_FOLDER_H

@@ -205,6 +205,15 @@ static int end(const struct export_job *job, struct outfile *out, struct err *er
     return failed;
 }
 
+bool provenance_is_ours(const char *path)
+{
+    json_t *whole = json_load_file(path, 0, NULL);
+    const char *program = json_string_value(json_object_get(whole, "program"));
+    bool ours = program && strncmp(program, "incisura ", strlen("incisura ")) == 0;
+    json_decref(whole);
+    return ours;
+}
+
 const struct writer provenance_writer = {
     .name = "provenance",
     .file = "provenance.json",

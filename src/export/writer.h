@@ -70,6 +70,9 @@ struct writer {
 
 extern const struct writer *const writers[]; /* NULL-terminated */
 
+/* Is this file a provenance.json of this program, of whatever version? */
+bool provenance_is_ours(const char *path);
+
 /* Writes what `text` holds and empties it; tells when it ran out of memory. */
 MUST_CHECK int write_text(struct outfile *out, struct str *text, struct err *err);
 

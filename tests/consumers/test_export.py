@@ -5,7 +5,9 @@ import csv
 import json
 import math
 import os
+import resource
 import shutil
+import signal
 import subprocess
 import sys
 import tempfile
@@ -78,6 +80,9 @@ features = table("out/features.csv")
 ok(list(long[0]) == "case,mark,code,onset_s,t_s,signal,unit,value,valid".split(","), "long columns")
 ok(list(wide[0]) == "case,mark,code,onset_s,t_s,hr,abp".split(","), "wide columns")
 marks = sorted({r["mark"] for r in wide}, key=int)
+ok([r["t_s"] for r in wide[:3750]] == [f"{(k - 1250) * 8 / 1000:.3f}".rstrip("0").rstrip(".")
+                                       for k in range(3750)], "t_s are the decimals of the grid",
+   [r["t_s"] for r in wide[1248:1254]])
 ok(len(wide) == len(marks) * 3750 and len(long) == 2 * len(wide), "row counts",
    (len(wide), len(long)))
 ok(all((r["value"] == "") == (r["valid"] == "0") for r in long), "empty exactly where not valid")
@@ -156,6 +161,49 @@ r = run("export", "S-204", "--recipe", "r.ini", "--into", "mine")
 ok(r.returncode == 2 and os.path.exists("mine/thesis.txt"), "other people's folders are kept", r.stderr)
 r = run("export", "S-204", "--recipe", "r.ini", "--into", "no/such/place")
 ok(r.returncode == 2 and len(r.stderr.splitlines()) == 1, "a folder that cannot be made", r.stderr)
+
+def contents(path):
+    return {n: open(f"{path}/{n}", "rb").read() for n in sorted(os.listdir(path))}
+
+
+def kept(what, path, says):
+    """An export into `path` is refused in one line, and everything in it stays."""
+    held = contents(path)
+    r = run("export", "S-204", "--recipe", "r.ini", "--into", path)
+    ok(r.returncode == 2 and len(r.stderr.splitlines()) == 1 and says in r.stderr and
+       contents(path) == held, what, r.stderr)
+
+
+with open("again/analysis.R", "w") as f:
+    f.write("1 + 1\n")
+kept("a script kept among the tables is refused, not removed", "again", "analysis.R")
+os.rename("again/analysis.R", "again/.notes")
+kept("a hidden file too", "again", ".notes")
+os.unlink("again/.notes")
+os.mkdir("foreign")
+with open("foreign/provenance.json", "w") as f:
+    f.write('{"program": "another 1.0"}\n')
+kept("another program's provenance.json is no earlier export", "foreign", "no earlier export")
+with open("foreign/provenance.json", "w") as f:
+    f.write("not JSON")
+kept("nor is one that is no JSON", "foreign", "no earlier export")
+
+os.symlink("again", "link")
+r = run("export", "S-204", "--recipe", "r.ini", "--into", "link")
+ok(r.returncode == 0 and os.path.islink("link") and contents("again") == before,
+   "through a link its folder is replaced, the link kept", r.stderr)
+
+
+def little_room():
+    """Stands in for a full disk: no file may grow beyond 100 kB, told by an error, not a signal."""
+    signal.signal(signal.SIGXFSZ, signal.SIG_IGN)
+    resource.setrlimit(resource.RLIMIT_FSIZE, (100000, 100000))
+
+
+r = subprocess.run([INCISURA, "export", "S-204", "--recipe", "r.ini", "--into", "out"],
+                   capture_output=True, text=True, timeout=120, preexec_fn=little_room)
+ok(r.returncode == 2 and len(r.stderr.splitlines()) == 1 and "windows-" in r.stderr and
+   contents("out") == before, "a disk that fills up leaves the earlier export", r.stderr)
 ok(not [n for n in os.listdir(".") if ".part-" in n], "no half-made folder is left")
 with open("none.ini", "w") as f:
     f.write(open("r.ini").read().replace("incision, intubation, cautery", "clamp")
