@@ -429,5 +429,9 @@ const char *baseline_statistic_name(enum baseline_statistic statistic)
 
 double recipe_time_s(const struct recipe *recipe, int64_t k)
 {
-    return (double)k / recipe->rate_hz - s_from_ns(recipe->before_ns);
+    /* Counted from the mark: k / rate - before would leave 3.6e-15 where 0 is meant. */
+    double lead = s_from_ns(recipe->before_ns) * recipe->rate_hz, whole = nearbyint(lead);
+    if (fabs(lead - whole) < 1e-6)
+        lead = whole;
+    return ((double)k - lead) / recipe->rate_hz;
 }

@@ -157,6 +157,23 @@ Test(window, a_step_trace_holds_its_value_for_its_age)
     cutter_free(cutter);
 }
 
+/* The same instants are written the same for any length before the mark, and 0 at it. */
+Test(window, times_are_those_of_the_decimal_grid)
+{
+    static const struct {
+        int64_t before_s;
+        double rate_hz;
+        int64_t k;
+        double t_s;
+    } rows[] = {{5, 50, 251, 0.02}, {5, 50, 249, -0.02}, {30, 250, 7501, 0.004}, {30, 1.1, 33, 0},
+                {60, 2.2, 132, 0},  {30, 250, 0, -30},   {30, 1000, 30001, 1e-3}};
+    for (size_t i = 0; i < sizeof rows / sizeof *rows; i++) {
+        struct recipe recipe = {.before_ns = rows[i].before_s * NS_PER_S,
+                                .rate_hz = rows[i].rate_hz};
+        cr_expect_eq(recipe_time_s(&recipe, rows[i].k), rows[i].t_s, "row %zu", i);
+    }
+}
+
 /* Worked by hand: -2 -1 | 0 1 2 3 4 at 1 Hz. */
 Test(window, features_by_hand)
 {
