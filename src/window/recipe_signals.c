@@ -38,6 +38,17 @@ static char *next_word(char **text, bool *quoted, bool *open)
     return from;
 }
 
+/* Columns that every table has: a signal of that name would stand there twice. */
+static bool is_column(const char *name)
+{
+    static const char *const columns[] = {"case", "mark", "code", "onset_s", "t_s"};
+    for (size_t i = 0; i < sizeof columns / sizeof *columns; i++) {
+        if (strcmp(columns[i], name) == 0)
+            return true;
+    }
+    return false;
+}
+
 static int check_settings(struct reading *reading, const char *key,
                           const struct recipe_signal *signal)
 {
@@ -117,6 +128,10 @@ int recipe_take_signal(struct reading *reading, const char *key, char *value)
     if (!name_valid(key))
         return recipe_refuse(reading, key, value,
                              "a signal's name begins with a letter and has letters, digits, _ - .");
+    if (is_column(key))
+        return recipe_refuse(reading, key, value,
+                             "case, mark, code, onset_s and t_s are columns of every table; name "
+                             "the signal otherwise");
     int failed = split_signal(reading, key, value, &made);
     if (!failed)
         failed = check_signal(reading, key, &made);

@@ -106,6 +106,7 @@ Test(recipe, each_error_names_its_line_and_what_is_allowed)
         {"[events]\ncodes = *\n[window]\nbefore = 0\nafter = 0\nrate = 4\n" SIGNALS, "0 samples"},
         {"[signals]\nhr = mood\n", "r.ini:2: hr = mood: no such derivation; there are"},
         {"[signals]\nhr = heart-rate colour=1\n", "r.ini:2: hr:"},
+        {"[signals]\nt_s = heart-rate\n", "r.ini:2: t_s = heart-rate: case, mark, code"},
         {"[signals]\nb = beats\n", "an event train"},
         {"[signals]\nx = channel\n", "needs a channel"},
         {"[signals]\nx = channel \"EDA\n", "a quote is opened"},
