@@ -28,11 +28,13 @@ static int marks_digest(struct store *store, char out[DIGEST_TEXT_SIZE], struct 
         return failed;
     for (size_t i = 0; i < count; i++) {
         const struct mark *m = &marks[i];
-        const char *texts[] = {m->code,       m->unit,  m->route,
-                               m->note,       m->rater, mark_state_name(m->state),
-                               m->stamp_clock};
-        str_putf(&text, "%lld %lld %lld %lld %d ", (long long)m->id, (long long)m->onset_ns,
-                 (long long)m->until_ns, (long long)m->error_ns, m->has_value);
+        const char *texts[] = {m->code,        m->unit,
+                               m->route,       m->note,
+                               m->rater,       mark_state_name(m->state),
+                               m->stamp_clock, mark_source_name(m->source)};
+        str_putf(&text, "%lld %lld %lld %lld %lld %lld %d ", (long long)m->id,
+                 (long long)m->onset_ns, (long long)m->until_ns, (long long)m->error_ns,
+                 (long long)m->stamp_ns, (long long)m->stamp_utc_ns, m->has_value);
         str_put_double(&text, m->has_value ? m->value : 0);
         for (size_t k = 0; k < sizeof texts / sizeof *texts; k++)
             str_putf(&text, " %zu:%s", strlen(texts[k]), texts[k]);
@@ -111,6 +113,41 @@ static json_t *states_json(const struct recipe *recipe)
     return list;
 }
 
+/* Codes asked for; an empty list is all of them. */
+static json_t *codes_json(const struct recipe *recipe)
+{
+    json_t *list = json_array();
+    for (size_t i = 0; list && i < recipe->code_count; i++) {
+        if (json_array_append_new(list, json_string(recipe->codes[i])) != 0) {
+            json_decref(list);
+            return NULL;
+        }
+    }
+    return list;
+}
+
+static json_t *not_within_json(const struct recipe *recipe)
+{
+    json_t *list = json_array();
+    for (size_t i = 0; list && i < recipe->exclusion_count; i++) {
+        const struct recipe_exclusion *rule = &recipe->exclusions[i];
+        if (json_array_append_new(list, json_pack("{s:s, s:f, s:f}", "code", rule->code, "from_s",
+                                                  s_from_ns(rule->from_ns), "to_s",
+                                                  s_from_ns(rule->to_ns))) != 0) {
+            json_decref(list);
+            return NULL;
+        }
+    }
+    return list;
+}
+
+static json_t *counts_json(const struct export_job *job)
+{
+    return json_pack("{s:I, s:I, s:I}", "windows", (json_int_t)job->selection->count,
+                     "marks_excluded", (json_int_t)job->selection->excluded_count,
+                     "signals_left_out", (json_int_t)job->left_out_count);
+}
+
 static json_t *settings_json(const struct recipe *recipe)
 {
     json_t *baseline =
@@ -120,7 +157,8 @@ static json_t *settings_json(const struct recipe *recipe)
                         baseline_statistic_name(recipe->baseline_statistic), "mode",
                         baseline_mode_name(recipe->baseline_mode))
             : json_null();
-    return json_pack("{s:o, s:b, s:f, s:f, s:f, s:f, s:I, s:f, s:f, s:o}", "states",
+    return json_pack("{s:o, s:o, s:o, s:b, s:f, s:f, s:f, s:f, s:I, s:f, s:f, s:o}", "codes",
+                     codes_json(recipe), "not_within", not_within_json(recipe), "states",
                      states_json(recipe), "first", recipe->first, "least_distance_s",
                      s_from_ns(recipe->least_distance_ns), "before_s", s_from_ns(recipe->before_ns),
                      "after_s", s_from_ns(recipe->after_ns), "rate_hz", recipe->rate_hz, "samples",
@@ -187,12 +225,12 @@ static int end(const struct export_job *job, struct outfile *out, struct err *er
     if (failed)
         return failed;
     json_t *whole = json_pack(
-        "{s:s, s:s, s:s, s:o, s:s, s:o, s:o, s:o, s:o}", "program", "incisura " INCISURA_VERSION,
-        "digests", "BLAKE2b-256", "caution",
+        "{s:s, s:s, s:s, s:o, s:s, s:o, s:o, s:o, s:o, s:o}", "program",
+        "incisura " INCISURA_VERSION, "digests", "BLAKE2b-256", "caution",
         "research software; derived values are for statistics, not for decisions about a patient",
-        "case", case_json(job, marks), "recipe", job->recipe->text, "settings",
-        settings_json(job->recipe), "signals", signals_json(job), "windows", windows_json(job),
-        "exclusions", exclusions_json(job));
+        "case", case_json(job, marks), "recipe", job->recipe->text, "counts", counts_json(job),
+        "settings", settings_json(job->recipe), "signals", signals_json(job), "windows",
+        windows_json(job), "exclusions", exclusions_json(job));
     char *text = whole ? json_dumps(whole, JSON_INDENT(1) | JSON_REAL_PRECISION(15)) : NULL;
     if (text) {
         outfile_write(out, text, strlen(text));
