@@ -34,6 +34,8 @@ static int scan(const struct recording *recording, struct range *ranges, struct 
             failed = recording_minmax(recording, i, 0, info->channels[i].samples, &ranges[i].low,
                                       &ranges[i].high, err);
         progress_add(&progress, 1);
+        if (!failed && progress_cancelled(&progress))
+            failed = err_set(err, ERR_CANCELLED, "%s: stopped", info->path);
     }
     progress_line_end(line);
     return failed;

@@ -98,8 +98,9 @@ MUST_CHECK int command_open_store(const struct arguments *arguments, struct stor
 MUST_CHECK int command_reader_options(const struct arguments *arguments, struct reader_options *out,
                                       struct err *err);
 
-/* A bar on stderr for a long job, on a terminal only. Runs on a thread of its own between begin
- * and end, so that the job only counts. */
+/* A long job between begin and end: how far it is, on stderr when that is a terminal (on a thread
+ * of its own, so that the job only counts), and ^C cancels `progress` instead of ending the
+ * program. */
 struct progress_line;
 struct progress_line *progress_line_begin(const char *what, struct progress *progress);
 void progress_line_end(struct progress_line *line); /* NULL is allowed */

@@ -2,6 +2,7 @@
  * common.c - what several commands do: failing, opening what is named first, showing progress.
  */
 #include <pthread.h>
+#include <signal.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
@@ -91,6 +92,29 @@ int command_open_store(const struct arguments *arguments, struct store **out, st
     return failed;
 }
 
+/* The job that ^C stops: it puts away what it has half done and ends with one line. A second ^C
+ * ends the program at once. */
+static struct progress *_Atomic interruptible;
+
+static void on_interrupt(int number)
+{
+    (void)number;
+    struct progress *progress = atomic_load(&interruptible);
+    if (progress)
+        atomic_store(&progress->cancelled, true);
+}
+
+static void let_interrupt(struct progress *progress)
+{
+    static const int signals[] = {SIGINT, SIGTERM};
+    struct sigaction action = {.sa_handler = progress ? on_interrupt : SIG_DFL,
+                               .sa_flags = progress ? (int)SA_RESETHAND : 0};
+    atomic_store(&interruptible, progress);
+    (void)sigemptyset(&action.sa_mask);
+    for (size_t i = 0; i < sizeof signals / sizeof *signals; i++)
+        (void)sigaction(signals[i], &action, NULL);
+}
+
 struct progress_line {
     const char *what;
     struct progress *progress;
@@ -119,6 +143,7 @@ static void *show(void *context)
 
 struct progress_line *progress_line_begin(const char *what, struct progress *progress)
 {
+    let_interrupt(progress);
     if (!isatty(STDERR_FILENO))
         return NULL;
     struct progress_line *line = calloc(1, sizeof *line);
@@ -135,6 +160,7 @@ struct progress_line *progress_line_begin(const char *what, struct progress *pro
 
 void progress_line_end(struct progress_line *line)
 {
+    let_interrupt(NULL);
     if (!line)
         return;
     atomic_store(&line->stop, true);

@@ -35,6 +35,16 @@ static int count_records(struct edf *edf, struct err *err)
     return ERR_OK;
 }
 
+/* Times are 64-bit ns: what would not fit is no recording. */
+static int check_length(const struct edf *edf, struct err *err)
+{
+    if (edf->records == 0 || edf->header.record_ns <= INT64_MAX / 16 / edf->records)
+        return ERR_OK;
+    return err_set(err, ERR_FORMAT,
+                   "%s: byte 244: %lld records of %.0f s make decades; the header is damaged",
+                   edf->base.info.path, (long long)edf->records, s_from_ns(edf->header.record_ns));
+}
+
 static bool has_annotations(const struct edf *edf)
 {
     for (size_t i = 0; i < edf->header.signal_count; i++) {
@@ -255,6 +265,8 @@ int edf_records_read(struct edf *edf, struct err *err)
     int failed = count_records(edf, err);
     if (!failed)
         failed = check_duration(edf, err);
+    if (!failed)
+        failed = check_length(edf, err);
     if (!failed)
         failed = place_records(edf, err);
     if (!failed)

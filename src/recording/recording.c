@@ -91,23 +91,48 @@ static int set_role(struct recording *recording, struct channel *channel,
     return channel->role_why ? ERR_OK : err_memory(err, "a role");
 }
 
-/* A label that an earlier channel has already gets " #2", " #3" ... */
-static int make_unique(struct recording *recording, size_t index, struct err *err)
+static bool label_taken(const struct channel *channels, size_t count, const char *label)
+{
+    for (size_t i = 0; i < count; i++) {
+        if (strcmp(channels[i].label, label) == 0)
+            return true;
+    }
+    return false;
+}
+
+/* The second channel of one label becomes "LABEL #2", and so on. `said` are the labels as they
+ * were. */
+static int make_unique(struct recording *recording, const char *const *said, size_t index,
+                       struct err *err)
 {
     struct channel *channels = recording->channels;
-    const char *label = channels[index].label;
-    for (int number = 2; number < 10000; number++) {
-        bool taken = false;
-        for (size_t i = 0; i < index && !taken; i++)
-            taken = strcmp(channels[i].label, channels[index].label) == 0;
-        if (!taken)
-            return ERR_OK;
-        channels[index].label = arena_printf(&recording->arena, "%s #%d", label, number);
+    size_t number = 1;
+    for (size_t i = 0; i < index; i++)
+        number += strcmp(said[i], said[index]) == 0;
+    /* A file may have a channel that is called "LABEL #2" already. */
+    while (number > 1 || label_taken(channels, index, channels[index].label)) {
+        channels[index].label = arena_printf(&recording->arena, "%s #%zu", said[index], number);
         if (!channels[index].label)
             return err_memory(err, "a label");
+        if (!label_taken(channels, index, channels[index].label))
+            break;
+        number++;
     }
-    return err_set(err, ERR_FORMAT, "%s: ten thousand channels are called '%s'",
-                   recording->info.path, label);
+    return ERR_OK;
+}
+
+static int make_all_unique(struct recording *recording, struct err *err)
+{
+    size_t count = recording->info.channel_count;
+    void *memory = NULL;
+    int failed = array_new(&memory, count, sizeof(const char *), err);
+    const char **said = memory;
+    for (size_t i = 0; i < count && !failed; i++)
+        said[i] = recording->channels[i].label;
+    for (size_t i = 0; i < count && !failed; i++)
+        failed = make_unique(recording, said, i, err);
+    free(memory);
+    return failed;
 }
 
 static int set_start(struct recording *recording, const struct reader_options *options,
@@ -130,9 +155,10 @@ static int finish(struct recording *recording, const struct reader_options *opti
 {
     size_t units = 0, roles = 0;
     int failed = set_start(recording, options, err);
+    if (!failed)
+        failed = make_all_unique(recording, err);
     for (size_t i = 0; i < recording->info.channel_count && !failed; i++) {
         struct channel *channel = &recording->channels[i];
-        failed = make_unique(recording, i, err);
         const char *unit = override(options->units, options->unit_count, channel->label, &units);
         if (unit)
             channel->unit = arena_string(&recording->arena, unit);

@@ -70,6 +70,9 @@ static int open_file(struct wfdb *wfdb, const char *header_path, const char *nam
 
 /* ---- segments ---- */
 
+/* Each segment has at most as many (wfdb_header.c), so that the sum never overflows. */
+static const int64_t frames_most = 1000000000000000;
+
 struct segment {
     const struct wfdb_header *header;
     const char *path;    /* of its header */
@@ -258,6 +261,11 @@ static int add_segments(struct wfdb *wfdb, const struct wfdb_header **layout, st
     int failed = ERR_OK;
     for (size_t i = 0; i < wfdb->header.segment_count && !failed; i++) {
         const struct wfdb_segment *entry = &wfdb->header.segments[i];
+        if (frame > frames_most)
+            return err_set(err, ERR_FORMAT,
+                           "%s: its segments make more than 1e15 samples; the "
+                           "header is damaged",
+                           wfdb->path);
         if (strcmp(entry->name, "~") == 0) {
             frame += entry->frames;
             continue;

@@ -122,8 +122,8 @@ static int compare_all(struct store *store, struct replay *replay, struct err *e
     return failed;
 }
 
-int store_verify(struct store *store, int64_t *rows, int64_t *bad_seq, char head[DIGEST_TEXT_SIZE],
-                 struct err *err)
+static int verify(struct store *store, int64_t *rows, int64_t *bad_seq, char head[DIGEST_TEXT_SIZE],
+                  struct err *err)
 {
     uint8_t digest[DIGEST_SIZE];
     struct replay replay = {store, json_object(), json_object(), json_object(), false};
@@ -143,4 +143,14 @@ int store_verify(struct store *store, int64_t *rows, int64_t *bad_seq, char head
     json_decref(replay.marks);
     json_decref(replay.recordings);
     return failed;
+}
+
+int store_verify(struct store *store, int64_t *rows, int64_t *bad_seq, char head[DIGEST_TEXT_SIZE],
+                 struct err *err)
+{
+    /* One view of the file throughout, whoever writes meanwhile. */
+    int failed = sql_run(store, "BEGIN", err);
+    if (failed)
+        return failed;
+    return sql_end(store, verify(store, rows, bad_seq, head, err), err);
 }

@@ -339,9 +339,9 @@ static int check(struct reading *reading)
     if (recipe->signal_count == 0)
         return missing(reading, "signals", "NAME = DERIVATION");
     double samples = s_from_ns(recipe->before_ns + recipe->after_ns) * recipe->rate_hz;
-    if (samples < 1 || samples > 1e8)
+    if (samples < 1 || samples > 1e7)
         return err_set(reading->err, ERR_FORMAT,
-                       "%s: before, after and rate make a window of %.3g samples; 1 to 1e8 can be "
+                       "%s: before, after and rate make a window of %.3g samples; 1 to 1e7 can be "
                        "written",
                        recipe->name, samples);
     recipe->samples = (int64_t)llround(samples);

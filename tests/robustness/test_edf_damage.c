@@ -188,3 +188,53 @@ Test(edf_damage, tolerated_with_a_note)
     }
     free(bytes);
 }
+
+/* Ten thousand channels of one name are told apart without taking for ever. */
+Test(edf_damage, many_channels_of_one_name)
+{
+    enum { CHANNELS = 9999 };
+    size_t header = 256 * (CHANNELS + 1), size = header + 2 * CHANNELS;
+    uint8_t *bytes = malloc(size);
+    memset(bytes, ' ', size);
+    memcpy(bytes, "0", 1);
+    memcpy(bytes + 168, "20.05.3108.55.00", 16);
+    memcpy(bytes + 236, "1", 1);
+    memcpy(bytes + 244, "1", 1);
+    memcpy(bytes + 252, "9999", 4);
+    for (size_t i = 0; i < CHANNELS; i++) {
+        memcpy(bytes + 256 + 16 * i, "EEG", 3);
+        memcpy(bytes + 256 + 216 * CHANNELS + 8 * i, "1", 1);
+    }
+    struct memory_file files[] = {{"a.edf", bytes, size}};
+    struct memory_files space;
+    struct recording *recording = NULL;
+    struct err err = {0};
+    memory_files_init(&space, files, 1);
+    struct reader_options options = {.files = &space.space};
+    cr_assert_eq(recording_open("a.edf", &options, &recording, &err), 0, "%s", err.text);
+    cr_expect_str_eq(recording_info(recording)->channels[0].label, "EEG");
+    cr_expect_str_eq(recording_info(recording)->channels[CHANNELS - 1].label, "EEG #9999");
+    recording_close(recording);
+    free(bytes);
+}
+
+Test(edf_damage, records_that_make_centuries_are_refused)
+{
+    size_t size;
+    uint8_t *bytes = make_file(&size);
+    struct memory_file files[] = {{"a.edf", bytes, size}};
+    struct memory_files space;
+    struct recording *recording = NULL;
+    struct err err = {0};
+    memcpy(bytes + 244, "999999  ", 8);
+    bytes = realloc(bytes, size * 4000);
+    for (size_t i = 1; i < 4000; i++)
+        memcpy(bytes + size * i, bytes + 256 * 4, size < 256 * 4 ? size : 256);
+    memory_files_init(&space, files, 1);
+    files[0].data = bytes;
+    files[0].size = size * 4000;
+    struct reader_options options = {.files = &space.space};
+    cr_expect_neq(recording_open("a.edf", &options, &recording, &err), 0);
+    cr_expect_not_null(strstr(err.text, "byte 244"), "%s", err.text);
+    free(bytes);
+}
