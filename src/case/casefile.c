@@ -380,11 +380,16 @@ const struct trace *casefile_channel(const struct casefile *casefile, size_t ind
 const struct trace *casefile_channel_find(const struct casefile *casefile, const char *name)
 {
     const struct trace *loose = NULL;
-    for (size_t i = 0; i < casefile->channel_count; i++) {
-        if (strcmp(casefile->channels[i]->name, name) == 0)
-            return casefile->channels[i];
-        if (!loose && ascii_equal(casefile->channels[i]->name, name))
-            loose = casefile->channels[i];
+    /* Stops at a recording that cannot be read: the name may be that of one of its channels, and
+     * the next recording's would be taken for it. */
+    for (size_t i = 0; i < casefile->loaded_count && casefile->loaded[i]->recording; i++) {
+        const struct loaded *loaded = casefile->loaded[i];
+        for (size_t k = 0; k < loaded->attached.info->channel_count; k++) {
+            if (strcmp(loaded->traces[k]->name, name) == 0)
+                return loaded->traces[k];
+            if (!loose && ascii_equal(loaded->traces[k]->name, name))
+                loose = loaded->traces[k];
+        }
     }
     return loose;
 }

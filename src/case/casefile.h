@@ -65,7 +65,8 @@ const struct attached *casefile_recording(const struct casefile *casefile, size_
  * second. */
 size_t casefile_channel_count(const struct casefile *casefile);
 const struct trace *casefile_channel(const struct casefile *casefile, size_t index);
-/* By name: exact, then any letter case; NULL when there is none. */
+/* By name: exact, then any letter case; NULL when there is none, or when a recording attached
+ * before the one that has it cannot be read: names would shift. */
 const struct trace *casefile_channel_find(const struct casefile *casefile, const char *name);
 
 /* First and last instant of all recordings and marks; both 0 for an empty case. */

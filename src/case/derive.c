@@ -34,14 +34,16 @@ static bool fits(const struct derivation *derivation, const struct trace *trace)
 }
 
 /* All even channels of the role in the first recording that has one. Leads of two devices are not
- * mixed: their clocks may disagree. */
+ * mixed: their clocks may disagree. Stops at a recording that cannot be read: it may be the one. */
 static size_t channels_by_role(const struct casefile *casefile, const struct derivation *derivation,
                                const struct trace **out)
 {
     size_t count = 0;
     for (size_t i = 0; i < casefile->loaded_count && count == 0; i++) {
         const struct loaded *loaded = casefile->loaded[i];
-        for (size_t k = 0; loaded->recording && k < loaded->attached.info->channel_count; k++) {
+        if (!loaded->recording)
+            break;
+        for (size_t k = 0; k < loaded->attached.info->channel_count; k++) {
             if (fits(derivation, loaded->traces[k]))
                 out[count++] = loaded->traces[k];
         }
@@ -84,10 +86,10 @@ static int choose_channels(const struct casefile *casefile, const struct derivat
                        derivation->name);
     request->channel_count = channels_by_role(casefile, derivation, request->channels);
     if (request->channel_count == 0)
-        return err_set(err, ERR_NOT_FOUND,
-                       "%s needs a channel of role %s and there is none; `incisura inspect` shows "
-                       "roles, --role LABEL=%s sets one",
-                       derivation->name, role_name(derivation->role), role_name(derivation->role));
+        return err_set(
+            err, ERR_NOT_FOUND, "%s needs a channel of role %s and there is none; %s",
+            derivation->name, role_name(derivation->role),
+            hint(casefile, "`incisura inspect` shows roles, --role LABEL=ROLE sets one"));
     if (derivation->one_channel && request->channel_count > 1)
         return err_set(err, ERR_USAGE, "%s takes one channel and %zu have role %s; name one",
                        derivation->name, request->channel_count, role_name(derivation->role));

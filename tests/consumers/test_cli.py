@@ -125,6 +125,21 @@ r = run("marks", "moved/c")
 ok(r.returncode == 0 and "incision" in r.stdout, "and the marks are there all the same", r.stderr)
 open("wave.csv", "w").write(text)
 
+# --- a lost recording does not lend its names to the next
+os.mkdir("two")
+os.chdir("two")
+for name, sign in (("one.csv", 1), ("two.csv", -1)):
+    open(name, "w").write("t,lead\n" + "".join(f"{k / 100:.2f},{sign * k}\n" for k in range(200)))
+done("start", "start", "c", "--rater", "KM")
+done("attach two with one label", "attach", "c", "one.csv", "two.csv", "--role", "lead=ecg")
+r = run("derive", "c", "channel", "--channel", "lead @2", "--from", "+1", "--to", "+1.01")
+ok(r.stdout.endswith("1,-100\n"), "the second is told apart", r.stdout + r.stderr)
+os.remove("one.csv")
+refused("the second is not taken for the lost first", "one.csv: not there", "derive", "c", "channel",
+        "--channel", "lead")
+refused("nor by role", "one.csv: not there", "derive", "c", "beats")
+os.chdir("..")
+
 # --- tampering
 db = sqlite3.connect("c.case")
 db.execute("UPDATE marks SET onset_ns = onset_ns + 1 WHERE id = 2")
