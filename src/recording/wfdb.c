@@ -9,6 +9,7 @@
 #include <stdlib.h>
 #include <string.h>
 
+#include "base/array.h"
 #include "recording/wfdb_annotations.h"
 #include "recording/wfdb_format.h"
 #include "recording/wfdb_impl.h"
@@ -118,34 +119,52 @@ static int make_channels(struct wfdb *wfdb, const struct wfdb_header *layout, st
     return ERR_OK;
 }
 
-/* Stretches between the runs of the first channel during which no other channel has a sample. */
-static bool all_silent(const struct wfdb *wfdb, int64_t from_ns, int64_t to_ns)
+static int by_start(const void *a, const void *b)
 {
-    for (size_t i = 0; i < wfdb->channel_count; i++) {
-        const struct pieces *pieces = &wfdb->pieces[i];
-        size_t at = run_find(pieces->runs, pieces->run_count, from_ns);
-        if (at < pieces->run_count && pieces->runs[at].start_ns < to_ns)
-            return false;
-    }
-    return true;
+    const struct run *first = a, *second = b;
+    return (first->start_ns > second->start_ns) - (first->start_ns < second->start_ns);
 }
 
+/* All runs of all channels, by their start; *count is set, caller frees. */
+static int all_runs(const struct wfdb *wfdb, struct run **out, size_t *count, struct err *err)
+{
+    void *memory = NULL;
+    *count = 0;
+    for (size_t i = 0; i < wfdb->channel_count; i++)
+        *count += wfdb->pieces[i].run_count;
+    int failed = array_new(&memory, *count, sizeof **out, err);
+    if (failed)
+        return failed;
+    *out = memory;
+    for (size_t i = 0, at = 0; i < wfdb->channel_count; i++) {
+        const struct pieces *pieces = &wfdb->pieces[i];
+        if (pieces->run_count > 0)
+            memcpy(*out + at, pieces->runs, pieces->run_count * sizeof **out);
+        at += pieces->run_count;
+    }
+    if (*count > 0)
+        qsort(*out, *count, sizeof **out, by_start);
+    return ERR_OK;
+}
+
+/* A gap is where no channel has a sample. */
 static int make_gaps(struct wfdb *wfdb, struct err *err)
 {
-    size_t most = 1;
-    for (size_t i = 0; i < wfdb->channel_count; i++)
-        most = wfdb->pieces[i].run_count > most ? wfdb->pieces[i].run_count : most;
-    struct gap *gaps = arena_alloc(&wfdb->base.arena, most, sizeof *gaps);
-    if (!gaps)
-        return err_memory(err, "the gaps");
-    const struct pieces *pieces = wfdb->pieces;
-    for (size_t i = 1; wfdb->channel_count > 0 && i < pieces->run_count; i++) {
-        int64_t from = run_end_ns(&pieces->runs[i - 1]), to = pieces->runs[i].start_ns;
-        if (to > from && all_silent(wfdb, from, to))
-            gaps[wfdb->base.info.gap_count++] = (struct gap){from, to - from};
+    struct run *runs = NULL;
+    size_t count;
+    int failed = all_runs(wfdb, &runs, &count, err);
+    struct gap *gaps = failed ? NULL : arena_alloc(&wfdb->base.arena, count + 1, sizeof *gaps);
+    if (!failed && !gaps)
+        failed = err_memory(err, "the gaps");
+    int64_t end = count > 0 && !failed ? run_end_ns(&runs[0]) : 0;
+    for (size_t i = 1; i < count && !failed; i++) {
+        if (runs[i].start_ns > end + 1)
+            gaps[wfdb->base.info.gap_count++] = (struct gap){end, runs[i].start_ns - end};
+        end = run_end_ns(&runs[i]) > end ? run_end_ns(&runs[i]) : end;
     }
     wfdb->base.info.gaps = gaps;
-    return ERR_OK;
+    free(runs);
+    return failed;
 }
 
 /* ---- annotations, start, end ---- */

@@ -144,6 +144,27 @@ Test(wfdb, segments_gaps_and_absent_signals)
     recording_close(recording);
 }
 
+/* "a" ends where "b" begins: no gap, as one of them is always there; then nobody, then "a". */
+Test(wfdb, a_gap_is_where_no_channel_is)
+{
+    static const uint8_t two[] = {1, 0, 2, 0};
+    const struct memory_file files[] = {
+        TEXT("m.hea", "m/5 2 2 8\nlay 0\ns1 2\ns2 2\n~ 2\ns1 2\n"),
+        TEXT("lay.hea", "lay 2 2 0\n~ 0 1/mV 0 0 0 0 0 a\n~ 0 1/mV 0 0 0 0 0 b\n"),
+        TEXT("s1.hea", "s1 1 2 2\ns.dat 16 1/mV 0 0 0 0 0 a\n"),
+        TEXT("s2.hea", "s2 1 2 2\ns.dat 16 1/mV 0 0 0 0 0 b\n"),
+        {"s.dat", two, sizeof two},
+    };
+    struct err err = {0};
+    struct recording *recording = open_record(files, 5, &err);
+    cr_assert_not_null(recording, "%s", err.text);
+    const struct recording_info *info = recording_info(recording);
+    cr_assert_eq(info->gap_count, 1);
+    cr_expect(info->gaps[0].start_ns == 2 * NS_PER_S && info->gaps[0].span_ns == NS_PER_S);
+    cr_expect_eq(info->channels[0].run_count, 2);
+    recording_close(recording);
+}
+
 /* The beginning of 100.atr as published: a rhythm note at 18, then beats. */
 Test(wfdb, annotations_of_record_100)
 {
