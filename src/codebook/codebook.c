@@ -13,7 +13,7 @@
 
 static const char *const kind_names[] = {"point",   "span", "dose", "rate",
                                          "setting", "note", "sync"};
-enum { KIND_COUNT = 7, UNIT_SIZE = 64 };
+enum { KIND_COUNT = 7, UNIT_SIZE = 64, SHOWN_MOST = 64 };
 
 static const char *const column_names[] = {"code",  "label",      "key",      "kind", "unit",
                                            "class", "pairs-with", "required", "help"};
@@ -43,12 +43,14 @@ static const char *field(const struct reading *reading, enum column column)
     return table_field(reading->table, reading->row, reading->columns[column]);
 }
 
-/* "book.csv:12: column 'key': REASON" */
+/* "book.csv:12: column 'key': 'VALUE' REASON"; as much of the value as one line can carry. */
 static int refuse(const struct reading *reading, enum column column, struct err *err,
                   const char *reason, const char *value)
 {
-    return err_set(err, ERR_FORMAT, "%s:%zu: column '%s': '%s' %s", reading->name,
-                   table_line(reading->table, reading->row), column_names[column], value, reason);
+    size_t length = strcspn(value, "\r\n");
+    return err_set(err, ERR_FORMAT, "%s:%zu: column '%s': '%.*s' %s", reading->name,
+                   table_line(reading->table, reading->row), column_names[column],
+                   (int)(length < SHOWN_MOST ? length : SHOWN_MOST), value, reason);
 }
 
 static int copy_text(struct reading *reading, enum column column, const char **out, struct err *err)
@@ -128,6 +130,9 @@ static int take_unit(struct reading *reading, struct code *out, struct err *err)
     if (!*text && wanted)
         return refuse(reading, UNIT, err,
                       "is empty; a dose, rate or setting needs a UCUM unit, or 1 for none", text);
+    /* No code is more than twice as long as its spelling: what is normalised is never cut. */
+    if (strlen(text) >= UNIT_SIZE / 2)
+        return refuse(reading, UNIT, err, "is too long for a unit", text);
     unit_normalise(text, unit, sizeof unit);
     if (*text && !unit_valid(unit))
         return refuse(reading, UNIT, err, "is not a UCUM unit; write mg, ug/kg/min, mm[Hg], %, 1",
@@ -145,10 +150,28 @@ static int take_required(struct reading *reading, struct code *out, struct err *
     return refuse(reading, REQUIRED, err, "is neither yes nor no", text);
 }
 
+/* More fields than columns: a comma stands unquoted somewhere, and what follows it is lost. */
+static int check_width(const struct reading *reading, struct err *err)
+{
+    size_t columns = table_columns(reading->table);
+    for (size_t i = columns; i < table_width(reading->table, reading->row); i++) {
+        const char *text = table_field(reading->table, reading->row, (int)i);
+        if (*text)
+            return err_set(err, ERR_FORMAT,
+                           "%s:%zu: column %zu: a field past the last of the %zu columns that line "
+                           "1 names; put a text with a '%c' in quotes",
+                           reading->name, table_line(reading->table, reading->row), i + 1, columns,
+                           table_delimiter(reading->table));
+    }
+    return ERR_OK;
+}
+
 static int take_row(struct reading *reading, struct err *err)
 {
     struct code *out = &reading->book->codes[reading->row];
-    int failed = take_code(reading, out, err);
+    int failed = check_width(reading, err);
+    if (!failed)
+        failed = take_code(reading, out, err);
     if (!failed)
         failed = take_key(reading, out, err);
     if (!failed)

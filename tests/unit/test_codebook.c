@@ -72,6 +72,12 @@ Test(codebook, a_bad_one_is_refused_with_line_and_column)
         {"code,key,kind,pairs-with\na,x,point,b\n", "book.csv:2: column 'pairs-with': 'b'"},
         {"code,key,kind,required\na,x,point,maybe\n", "book.csv:2: column 'required'"},
         {"code,key,kind\na,x,\"point\n", "book.csv:2: a quote"},
+        {"code,key,kind,help\na,x,point,cut, then more\n", "book.csv:2: column 5: a field past"},
+        {"code,key,kind,unit\na,x,dose,m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/m/"
+         "m/m/"
+         "spoons\n",
+         "book.csv:2: column 'unit': 'm/m"},
+        {"code,key,kind\n\"a\nb\",x,point\n", "book.csv:3: column 'code': 'a' is not a code"},
     };
     for (size_t i = 0; i < sizeof rows / sizeof *rows; i++) {
         struct codebook *book = NULL;
@@ -80,6 +86,7 @@ Test(codebook, a_bad_one_is_refused_with_line_and_column)
         cr_expect_null(book);
         cr_expect_eq(strncmp(err.text, rows[i].says, strlen(rows[i].says)), 0, "row %zu: %s", i,
                      err.text);
+        cr_expect_null(strchr(err.text, '\n'), "row %zu: one line", i);
     }
 }
 
