@@ -112,6 +112,8 @@ int history_append(struct store *store, const struct history_entry *entry, struc
 {
     uint8_t previous[DIGEST_SIZE], digest[DIGEST_SIZE];
     int64_t last = 0;
+    if (entry->why && !utf8_valid(entry->why, strlen(entry->why)))
+        return err_set(err, ERR_USAGE, "the reason for a change is not UTF-8");
     char *before = json_text(entry->before), *after = json_text(entry->after);
     int failed =
         before && after ? last_row(store, &last, previous, err) : err_memory(err, "a history row");

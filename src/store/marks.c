@@ -1,6 +1,7 @@
 /*
  * marks.c - adding, changing and listing marks, each with the history row that explains it.
  */
+#include <math.h>
 #include <stdlib.h>
 #include <string.h>
 
@@ -204,7 +205,8 @@ int mark_write(struct store *store, int64_t id, const json_t *fields, struct err
 
 static int check_mark(const struct mark *mark, struct err *err)
 {
-    const char *texts[] = {mark->code, mark->unit, mark->route, mark->note, mark->rater};
+    const char *texts[] = {mark->code, mark->unit,  mark->route,
+                           mark->note, mark->rater, mark->stamp_clock};
     for (size_t i = 0; i < sizeof texts / sizeof *texts; i++) {
         if (texts[i] && !utf8_valid(texts[i], strlen(texts[i])))
             return err_set(err, ERR_USAGE, "a mark's text is not UTF-8");
@@ -213,6 +215,8 @@ static int check_mark(const struct mark *mark, struct err *err)
         return err_set(err, ERR_USAGE, "a mark needs a code");
     if (mark->onset_ns == NS_NONE)
         return err_set(err, ERR_USAGE, "a mark needs a time");
+    if (mark->has_value && !isfinite(mark->value))
+        return err_set(err, ERR_USAGE, "a mark's value is not a finite number");
     return ERR_OK;
 }
 

@@ -4,6 +4,7 @@
 #include <string.h>
 
 #include "base/array.h"
+#include "base/str.h"
 #include "store/store_impl.h"
 
 json_t *recording_to_json(const struct stored_recording *recording)
@@ -104,26 +105,43 @@ static int log_json(struct store *store, const char *action, int64_t id, json_t 
     return failed;
 }
 
-int store_recording_add(struct store *store, const struct stored_recording *recording, int64_t *id,
-                        struct err *err)
+/* Inside the caller's transaction, so that no other connection attaches it in between. */
+static int add(struct store *store, const struct stored_recording *recording, int64_t *id,
+               struct err *err)
 {
     const struct stored_recording *known;
     size_t count;
-    int64_t made = 0;
+    forget(store);
     int failed = store_recordings(store, &known, &count, err);
     for (size_t i = 0; i < count && !failed; i++) {
         if (strcmp(known[i].digest, recording->digest) == 0)
-            return err_set(err, ERR_CONFLICT, "%s: attached already, as recording %lld",
-                           recording->path, (long long)known[i].id);
+            failed = err_set(err, ERR_CONFLICT, "%s: attached already, as recording %lld",
+                             recording->path, (long long)known[i].id);
     }
+    if (!failed)
+        failed = insert(store, recording, id, err);
+    if (!failed)
+        failed = log_json(store, "attach", *id, NULL, recording_to_json(recording), err);
+    return failed;
+}
+
+static int check_path(const char *path, struct err *err)
+{
+    return utf8_valid(path, strlen(path))
+               ? ERR_OK
+               : err_set(err, ERR_USAGE, "a recording's path is not UTF-8; rename file or folder");
+}
+
+int store_recording_add(struct store *store, const struct stored_recording *recording, int64_t *id,
+                        struct err *err)
+{
+    int64_t made = 0;
+    int failed = check_path(recording->path, err);
     if (!failed)
         failed = sql_begin(store, err);
     if (failed)
         return failed;
-    failed = insert(store, recording, &made, err);
-    if (!failed)
-        failed = log_json(store, "attach", made, NULL, recording_to_json(recording), err);
-    failed = sql_end(store, failed, err);
+    failed = sql_end(store, add(store, recording, &made, err), err);
     forget(store);
     if (!failed)
         *id = made;
@@ -154,6 +172,8 @@ int store_recording_found(struct store *store, int64_t id, const char *path, int
         at = known[i].id == id ? &known[i] : NULL;
     if (!failed && !at)
         failed = err_set(err, ERR_NOT_FOUND, "%s: no recording %lld", store->path, (long long)id);
+    if (!failed)
+        failed = check_path(path, err);
     if (!failed)
         failed = sql_begin(store, err);
     if (failed)

@@ -92,7 +92,8 @@ int64_t sql_column_time(sqlite3_stmt *statement, int column)
 char *sql_column_text(sqlite3_stmt *statement, int column, struct arena *arena)
 {
     const char *text = (const char *)sqlite3_column_text(statement, column);
-    return arena_string(arena, text ? text : "");
+    size_t length = (size_t)sqlite3_column_bytes(statement, column);
+    return text ? arena_string_n(arena, text, length) : arena_string(arena, "");
 }
 
 int sql_begin(struct store *store, struct err *err)

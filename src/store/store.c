@@ -9,6 +9,7 @@
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
+#include <sys/stat.h>
 #include <unistd.h>
 
 #include "base/str.h"
@@ -92,6 +93,22 @@ static int open_as(struct store *store, const char *name, int flags, struct err 
     return probe(store, err);
 }
 
+/* Taking the file as it is leaves out what stands in a write-ahead log beside it: marks. */
+static int refuse_log(const char *path, struct err *err)
+{
+    struct str name = {0};
+    struct stat state;
+    str_putf(&name, "%s-wal", path);
+    int failed = str_failed(&name) ? err_memory(err, path) : ERR_OK;
+    if (!failed && stat(str_text(&name), &state) == 0 && state.st_size > 0)
+        failed = err_set(err, ERR_READ_ONLY,
+                         "%s: its newest marks are in %s, which cannot be read where nothing can "
+                         "be written; copy both files to a folder that can be written",
+                         path, path_name(str_text(&name)));
+    str_free(&name);
+    return failed;
+}
+
 /* For reading, the file is opened for writing all the same where it can be, with queries only: a
  * connection that may not write would leave its -wal and -shm files lying about. On a disk that
  * cannot be written, the file is taken as it is. */
@@ -111,6 +128,9 @@ static int open_file(struct store *store, enum store_mode mode, struct err *err)
         return sql_run(store, "PRAGMA query_only = 1", err);
     if (!open_as(store, store->path, SQLITE_OPEN_READONLY, NULL))
         return ERR_OK;
+    failed = refuse_log(store->path, err);
+    if (failed)
+        return failed;
     struct str uri = {0};
     if (immutable_uri(store->path, &uri))
         failed = err_memory(err, store->path);
@@ -167,8 +187,9 @@ static int migrate(struct store *store, struct err *err)
     return sql_end(store, failed, err);
 }
 
-static int load_header(struct store *store, struct err *err)
+int header_read(struct store *store, struct arena *arena, struct case_header *out, struct err *err)
 {
+    enum { TEXTS = 4 };
     sqlite3_stmt *statement;
     int failed = sql_prepare(store,
                              "SELECT subject, procedure, rater, codebook, epoch_civil_ns, "
@@ -178,21 +199,19 @@ static int load_header(struct store *store, struct err *err)
         return failed;
     int code = sqlite3_step(statement);
     if (code == SQLITE_ROW) {
-        arena_free(&store->header_arena);
-        char *texts[4];
-        bool good = true;
-        for (int i = 0; i < 4; i++) {
-            texts[i] = sql_column_text(statement, i, &store->header_arena);
-            good &= texts[i] != NULL;
+        char *texts[TEXTS];
+        for (int i = 0; i < TEXTS && !failed; i++) {
+            texts[i] = sql_column_text(statement, i, arena);
+            failed = texts[i] ? ERR_OK : err_memory(err, "a case");
         }
-        store->header = (struct case_header){texts[0],
-                                             texts[1],
-                                             texts[2],
-                                             texts[3],
-                                             (size_t)sqlite3_column_bytes(statement, 3),
-                                             sql_column_time(statement, 4),
-                                             sqlite3_column_int(statement, 5)};
-        failed = good ? ERR_OK : err_memory(err, "a case");
+        if (!failed)
+            *out = (struct case_header){texts[0],
+                                        texts[1],
+                                        texts[2],
+                                        texts[3],
+                                        (size_t)sqlite3_column_bytes(statement, 3),
+                                        sql_column_time(statement, 4),
+                                        sqlite3_column_int(statement, 5)};
     } else {
         failed =
             code == SQLITE_DONE
@@ -201,6 +220,22 @@ static int load_header(struct store *store, struct err *err)
     }
     (void)sqlite3_finalize(statement);
     return failed;
+}
+
+/* The header kept is the old one until the new one is read whole. */
+static int load_header(struct store *store, struct err *err)
+{
+    struct arena arena = {0};
+    struct case_header header;
+    int failed = header_read(store, &arena, &header, err);
+    if (failed) {
+        arena_free(&arena);
+        return failed;
+    }
+    arena_free(&store->header_arena);
+    store->header_arena = arena;
+    store->header = header;
+    return ERR_OK;
 }
 
 static int set_rater(struct store *store, const char *rater, struct err *err)
@@ -358,15 +393,25 @@ bool store_newer(const struct store *store)
     return store->newer;
 }
 
+static int epoch_fixed(struct store *store, struct err *err)
+{
+    return err_set(err, ERR_CONFLICT, "%s: the case's start is fixed already; open the case again",
+                   store->path);
+}
+
 static int update_epoch(struct store *store, int64_t epoch_civil_ns, struct err *err)
 {
     sqlite3_stmt *statement;
-    int failed =
-        sql_prepare(store, "UPDATE case_info SET epoch_civil_ns = ? WHERE id = 1", &statement, err);
+    int failed = sql_prepare(
+        store, "UPDATE case_info SET epoch_civil_ns = ? WHERE id = 1 AND epoch_civil_ns IS NULL",
+        &statement, err);
     if (failed)
         return failed;
     (void)sqlite3_bind_int64(statement, 1, epoch_civil_ns);
     failed = sql_finish(store, statement, err);
+    /* Another connection may have fixed it since this one read the header. */
+    if (!failed && sqlite3_changes(store->db) == 0)
+        return epoch_fixed(store, err);
     json_t *after = json_pack("{s:I}", "epoch_civil_ns", (json_int_t)epoch_civil_ns);
     struct history_entry entry = {"epoch", 0, 0, NULL, after, ""};
     if (!failed)
@@ -378,7 +423,7 @@ static int update_epoch(struct store *store, int64_t epoch_civil_ns, struct err 
 int store_epoch_fix(struct store *store, int64_t epoch_civil_ns, struct err *err)
 {
     if (store->header.epoch_civil_ns != NS_NONE)
-        return err_set(err, ERR_CONFLICT, "%s: the case's start is fixed already", store->path);
+        return epoch_fixed(store, err);
     int failed = sql_begin(store, err);
     if (!failed)
         failed = sql_end(store, update_epoch(store, epoch_civil_ns, err), err);
@@ -399,6 +444,8 @@ bool store_refresh(struct store *store)
 
 int store_log(struct store *store, const char *action, const char *detail, struct err *err)
 {
+    if (!utf8_valid(detail, strlen(detail)))
+        return err_set(err, ERR_USAGE, "%s: its text for the history is not UTF-8", action);
     json_t *after = json_pack("{s:s}", "detail", detail);
     if (!after)
         return err_memory(err, action);

@@ -43,7 +43,7 @@ MUST_CHECK int sql_integer(struct store *store, const char *sql, int64_t missing
                            struct err *err);
 void sql_bind_time(sqlite3_stmt *statement, int index, int64_t ns); /* NS_NONE = NULL */
 int64_t sql_column_time(sqlite3_stmt *statement, int column);       /* NULL = NS_NONE */
-/* A copy in the arena; NULL when out of memory. */
+/* A copy in the arena, of every byte even when a NUL is among them; NULL when out of memory. */
 MUST_CHECK char *sql_column_text(sqlite3_stmt *statement, int column, struct arena *arena);
 
 /* BEGIN IMMEDIATE, after checking that the store may be written; COMMIT, or ROLLBACK when
@@ -90,9 +90,15 @@ MUST_CHECK int mark_load(struct store *store, int64_t id, struct arena *arena, s
 /* Writes the fields of `fields` (as in mark_to_json) into the row of mark `id`. */
 MUST_CHECK int mark_write(struct store *store, int64_t id, const json_t *fields, struct err *err);
 
+/* ---- store.c ---- */
+
+/* The header as it is in the file now, its texts in `arena`. */
+MUST_CHECK int header_read(struct store *store, struct arena *arena, struct case_header *out,
+                           struct err *err);
+json_t *header_to_json(const struct case_header *header);
+
 /* ---- recordings.c ---- */
 
 json_t *recording_to_json(const struct stored_recording *recording);
-json_t *header_to_json(const struct case_header *header);
 
 #endif

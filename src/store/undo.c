@@ -15,12 +15,12 @@ static const char undo_target[] =
     "SELECT max(step) FROM (SELECT step, action, max(seq) FROM history WHERE step > 0 "
     "GROUP BY step) WHERE action <> 'undo'";
 
-/* Undone steps whose undo came after the birth of every higher step: those are still redoable. */
+/* Undone steps that were undone after the newest step was begun. Steps are numbered as they begin,
+ * so the newest one stands for all. */
 static const char redo_target[] =
-    "WITH last AS (SELECT step, action, max(seq) AS seq FROM history WHERE step > 0 GROUP BY "
-    "step), born AS (SELECT step, min(seq) AS seq FROM history WHERE step > 0 GROUP BY step) "
-    "SELECT min(step) FROM last WHERE action = 'undo' AND NOT EXISTS "
-    "(SELECT 1 FROM born WHERE born.step > last.step AND born.seq > last.seq)";
+    "SELECT min(step) FROM (SELECT step, action, max(seq) AS seq FROM history WHERE step > 0 "
+    "GROUP BY step) WHERE action = 'undo' AND seq > (SELECT min(seq) FROM history WHERE step = "
+    "(SELECT max(step) FROM history) AND step > 0)";
 
 /* What a mark goes back to, from the original row of the step. Undoing an "add" rejects. */
 static json_t *target_fields(bool undo, const char *action, const char *before, const char *after)

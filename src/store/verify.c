@@ -92,6 +92,22 @@ static int none_left(struct store *store, const char *what, json_t *table, struc
                    store->path, what, json_object_iter_key(first));
 }
 
+/* As it is in the file now: another connection may have fixed the epoch since this one opened. */
+static int compare_header(struct store *store, struct replay *replay, struct err *err)
+{
+    struct arena arena = {0};
+    struct case_header now;
+    json_t *table = json_object();
+    int failed = header_read(store, &arena, &now, err);
+    if (!failed && (!table || json_object_set(table, "0", replay->header) != 0))
+        failed = err_memory(err, "verifying");
+    if (!failed)
+        failed = compare(store, "case", 0, table, header_to_json(&now), err);
+    json_decref(table);
+    arena_free(&arena);
+    return failed;
+}
+
 static int compare_all(struct store *store, struct replay *replay, struct err *err)
 {
     const struct mark *marks;
@@ -111,15 +127,36 @@ static int compare_all(struct store *store, struct replay *replay, struct err *e
         failed = none_left(store, "mark", replay->marks, err);
     if (!failed)
         failed = none_left(store, "recording", replay->recordings, err);
-    if (failed)
-        return failed;
-    json_t *header = json_object();
-    if (!header || json_object_set(header, "0", replay->header) != 0)
-        failed = err_memory(err, "verifying");
-    if (!failed)
-        failed = compare(store, "case", 0, header, header_to_json(&store->header), err);
-    json_decref(header);
-    return failed;
+    return failed ? failed : compare_header(store, replay, err);
+}
+
+/* What the comparison of texts and names cannot see, as it is in no value read: bytes after a NUL,
+ * names that are none (a CHECK can be switched off), numbers out of range. */
+static int check_readable(struct store *store, struct err *err)
+{
+    static const struct {
+        const char *what, *sql;
+    } rows[] = {
+        {"mark", "SELECT min(id) FROM marks WHERE instr(CAST(code || unit || route || note || "
+                 "rater || stamp_clock AS BLOB), x'00') OR state NOT IN ('incomplete', 'marked', "
+                 "'confirmed', 'rejected') OR source NOT IN ('live', 'review', 'command', "
+                 "'import')"},
+        {"recording", "SELECT min(id) FROM recordings WHERE instr(CAST(path || digest || options "
+                      "AS BLOB), x'00') OR length(digest) > 64"},
+        {"case", "SELECT min(id) FROM case_info WHERE id <> 1 OR instr(CAST(subject || procedure "
+                 "|| rater AS BLOB), x'00') OR utc_offset_s NOT BETWEEN -86400 AND 86400"},
+    };
+    for (size_t i = 0; i < sizeof rows / sizeof *rows; i++) {
+        int64_t id;
+        int failed = sql_integer(store, rows[i].sql, 0, &id, err);
+        if (failed)
+            return failed;
+        if (id != 0)
+            return err_set(err, ERR_CONFLICT,
+                           "%s: %s %lld holds what the program never writes; it was altered",
+                           store->path, rows[i].what, (long long)id);
+    }
+    return ERR_OK;
 }
 
 static int verify(struct store *store, int64_t *rows, int64_t *bad_seq, char head[DIGEST_TEXT_SIZE],
@@ -137,6 +174,8 @@ static int verify(struct store *store, int64_t *rows, int64_t *bad_seq, char hea
         failed = err_set(err, ERR_CONFLICT, "%s: a history row cannot be read", store->path);
     if (!failed)
         failed = compare_all(store, &replay, err);
+    if (!failed)
+        failed = check_readable(store, err);
     if (!failed && head)
         digest_text(digest, head);
     json_decref(replay.header);

@@ -136,6 +136,17 @@ Test(store_alter, every_alteration_is_named)
         {"UPDATE case_info SET subject = 'S-2'", "subject", 0},
         {"UPDATE case_info SET codebook = 'y'", "codebook_digest", 0},
         {"UPDATE case_info SET epoch_civil_ns = 6", "epoch_civil_ns", 0},
+        {"UPDATE case_info SET codebook = 'x' || char(0) || hex(zeroblob(100000))",
+         "codebook_digest", 0},
+        {"UPDATE case_info SET subject = subject || char(0) || 'x'", "case 1 holds", 0},
+        {"UPDATE case_info SET utc_offset_s = utc_offset_s + 4294967296", "case 1 holds", 0},
+        {"UPDATE marks SET note = note || char(0) || 'x' WHERE id = 2", "mark 2 holds", 0},
+        {"UPDATE marks SET code = code || char(0) WHERE id = 3", "mark 3 holds", 0},
+        {"PRAGMA ignore_check_constraints = 1; UPDATE marks SET source = 'bogus' WHERE id = 1",
+         "mark 1", 0},
+        {"PRAGMA ignore_check_constraints = 1; UPDATE marks SET state = 'bogus' WHERE id = 1",
+         "mark 1", 0},
+        {"UPDATE recordings SET options = char(0) || 'x'", "recording 1 holds", 0},
     };
     struct err err = {0};
     int64_t bad;

@@ -3,10 +3,12 @@
  */
 #include <criterion/criterion.h>
 
+#include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 #include <sys/stat.h>
+#include <sys/wait.h>
 #include <unistd.h>
 
 #include "store/store.h"
@@ -259,4 +261,120 @@ Test(store, another_connection_is_noticed)
     cr_expect_eq(count, 1);
     store_close(two);
     store_close(one);
+}
+
+Test(store, two_connections_cannot_both_fix_or_attach)
+{
+    static const struct stored_recording recording = {
+        .path = "/x/a.edf", .digest = "aa", .options = "", .start_civil_ns = NS_NONE};
+    struct store *one = open_store(STORE_WRITE, NULL), *two = open_store(STORE_WRITE, NULL);
+    const struct stored_recording *list;
+    size_t count;
+    int64_t id;
+    cr_assert_eq(store_recordings(two, &list, &count, &err), 0);
+    cr_assert_eq(store_epoch_fix(one, 1000, &err), 0);
+    (void)verified_rows(two);
+    cr_expect_eq(store_epoch_fix(two, 2000, &err), ERR_CONFLICT);
+    cr_assert_eq(store_recording_add(one, &recording, &id, &err), 0);
+    cr_expect_eq(store_recording_add(two, &recording, &id, &err), ERR_CONFLICT);
+    cr_expect_not_null(strstr(err.text, "attached already"), "%s", err.text);
+    (void)verified_rows(one);
+    store_close(two);
+    store_close(one);
+    one = open_store(STORE_READ, NULL);
+    cr_expect_eq(store_header(one)->epoch_civil_ns, 1000);
+    store_close(one);
+}
+
+Test(store, what_cannot_be_stored_is_said_so)
+{
+    struct store *store = open_store(STORE_WRITE, NULL);
+    struct mark mark = point("incision", 1);
+    struct stored_recording recording = {
+        .path = "/x/\xFF", .digest = "aa", .options = "", .start_civil_ns = NS_NONE};
+    int64_t id;
+    mark.has_value = true;
+    for (int i = 0; i < 2; i++) {
+        mark.value = i ? INFINITY : NAN;
+        cr_expect_eq(store_mark_add(store, &mark, "", &id, &err), ERR_USAGE, "%s", err.text);
+    }
+    mark.value = 1;
+    cr_expect_eq(store_mark_add(store, &mark, "\xFF", &id, &err), ERR_USAGE, "%s", err.text);
+    mark.stamp_clock = "\xFF";
+    cr_expect_eq(store_mark_add(store, &mark, "", &id, &err), ERR_USAGE, "%s", err.text);
+    cr_expect_eq(store_log(store, "export", "\xFF", &err), ERR_USAGE, "%s", err.text);
+    cr_expect_eq(store_recording_add(store, &recording, &id, &err), ERR_USAGE, "%s", err.text);
+    cr_expect_eq(verified_rows(store), 1);
+    store_close(store);
+}
+
+/* What undo and redo must do, kept as two stacks; the store keeps nothing but its history. */
+Test(store, undo_and_redo_in_any_order_as_two_stacks_would)
+{
+    enum { STEPS = 300 };
+    static char notes[STEPS + 1][12];
+    struct store *store = open_store(STORE_WRITE, NULL);
+    int done[STEPS], undone[STEPS], done_count = 0, undone_count = 0;
+    uint32_t state = 11;
+    int64_t id = add(store, "incision", 1);
+    for (int i = 0; i < STEPS; i++) {
+        state = state * 1664525u + 1013904223u;
+        switch (state >> 24 & 3) {
+        case 0:
+        case 1:
+            (void)snprintf(notes[i + 1], sizeof notes[0], "%d", i + 1);
+            note(store, id, notes[i + 1]);
+            done[done_count++] = i + 1;
+            undone_count = 0;
+            break;
+        case 2:
+            if (done_count > 0) {
+                cr_assert(undo(store), "step %d", i);
+                undone[undone_count++] = done[--done_count];
+            }
+            break;
+        default:
+            cr_assert_eq(redo(store), undone_count > 0, "step %d", i);
+            if (undone_count > 0)
+                done[done_count++] = undone[--undone_count];
+        }
+        cr_assert_str_eq(get(store, id)->note, notes[done_count ? done[done_count - 1] : 0],
+                         "step %d", i);
+    }
+    (void)verified_rows(store);
+    store_close(store);
+}
+
+/* A case copied with its write-ahead log to where nothing can be written, read by someone who is
+ * not root. 0 when the program says that it cannot show all of it. */
+static int read_where_nothing_can_be_written(const char *copy)
+{
+    struct store *store = NULL;
+    if (geteuid() == 0 && setresuid(65534, 65534, 65534) != 0)
+        return 2;
+    int failed = store_open(copy, STORE_READ, NULL, &store, &err);
+    store_close(store);
+    return failed == ERR_READ_ONLY && strstr(err.text, "d.case-wal") ? 0 : 1;
+}
+
+Test(store, marks_in_the_log_are_never_left_out_in_silence)
+{
+    struct store *store = open_store(STORE_WRITE, NULL);
+    char command[1024], copy[96];
+    int status = -1;
+    (void)add(store, "incision", 1);
+    (void)snprintf(copy, sizeof copy, "%s/ro/d.case", folder);
+    (void)snprintf(command, sizeof command,
+                   "chmod 755 %s && mkdir %s/ro && cp %s %s && cp %s-wal %s-wal && "
+                   "chmod 444 %s* && chmod 555 %s/ro",
+                   folder, folder, path, copy, path, copy, copy, folder);
+    cr_assert_eq(system(command), 0);
+    pid_t pid = fork();
+    if (pid == 0)
+        _exit(read_where_nothing_can_be_written(copy));
+    cr_assert_eq(waitpid(pid, &status, 0), pid);
+    cr_expect(WIFEXITED(status) && WEXITSTATUS(status) == 0, "status %d", status);
+    (void)snprintf(command, sizeof command, "chmod 755 %s/ro", folder);
+    cr_assert_eq(system(command), 0);
+    store_close(store);
 }
