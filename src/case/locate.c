@@ -99,7 +99,9 @@ static char *search_beside(struct casefile *casefile, const struct stored_record
     for (struct dirent *entry; listing && !found && (entry = readdir(listing));) {
         char *path = path_beside(casefile->path, entry->d_name);
         struct stat state;
-        if (path && stat(path, &state) == 0 && S_ISREG(state.st_mode) &&
+        /* Not the case itself: closing it once more would drop the database's locks on it. */
+        bool own = path && strcmp(path, casefile->path) == 0;
+        if (path && !own && stat(path, &state) == 0 && S_ISREG(state.st_mode) &&
             is_it(casefile, stored, path))
             found = path;
         else
