@@ -6,7 +6,7 @@
 struct clock_map clock_map_on_trust(int64_t start_civil_ns, int64_t epoch_civil_ns)
 {
     bool known = start_civil_ns != NS_NONE && epoch_civil_ns != NS_NONE;
-    return (struct clock_map){known ? start_civil_ns - epoch_civil_ns : 0, false};
+    return (struct clock_map){.offset_ns = known ? start_civil_ns - epoch_civil_ns : 0};
 }
 
 int64_t clock_map_to_case(const struct clock_map *map, int64_t recording_ns)
