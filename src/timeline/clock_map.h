@@ -36,6 +36,10 @@ struct clock_map {
  * start (the file does not say) puts it at the epoch. */
 struct clock_map clock_map_on_trust(int64_t start_civil_ns, int64_t epoch_civil_ns);
 
+/* Both never fall. A time that a piece's line puts beyond the start of the next piece is held
+ * there. from_case gives the first recording time that is not before case_ns: to_case and back is
+ * the same time wherever a piece does not shrink time, and at most some ns earlier where it does.
+ */
 int64_t clock_map_to_case(const struct clock_map *map, int64_t recording_ns);
 int64_t clock_map_from_case(const struct clock_map *map, int64_t case_ns);
 
