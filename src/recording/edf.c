@@ -35,11 +35,27 @@ static inline int32_t load24(const uint8_t *at)
     return value >> 8;
 }
 
+static inline int32_t load(const uint8_t *at, int width)
+{
+    return width == 2 ? load16(at) : load24(at);
+}
+
+static void decode_valid(const struct edf_signal *signal, int width, const uint8_t *from,
+                         int64_t count, float *out)
+{
+    for (int64_t i = 0; i < count; i++) {
+        int32_t value = load(from + width * i, width);
+        out[i] = value == signal->missing ? NAN : (float)(signal->gain * value + signal->offset);
+    }
+}
+
 static void decode(const struct edf_signal *signal, int width, const uint8_t *from, int64_t count,
                    float *out)
 {
     const double gain = signal->gain, offset = signal->offset;
-    if (width == 2) {
+    if (signal->has_missing) {
+        decode_valid(signal, width, from, count, out);
+    } else if (width == 2) {
         for (int64_t i = 0; i < count; i++)
             out[i] = (float)(gain * load16(from + 2 * i) + offset);
     } else {
@@ -74,6 +90,19 @@ static void widen24(const uint8_t *from, int64_t count, struct extremes *all)
         high = value > high ? value : high;
     }
     *all = (struct extremes){low, high};
+}
+
+/* Missing samples left out; low > high afterwards: there was none. */
+static void widen_valid(const uint8_t *from, int64_t count, int width, int32_t missing,
+                        struct extremes *all)
+{
+    for (int64_t i = 0; i < count; i++) {
+        int32_t value = load(from + width * i, width);
+        if (value == missing)
+            continue;
+        all->low = value < all->low ? value : all->low;
+        all->high = value > all->high ? value : all->high;
+    }
 }
 
 /* The longest piece of [first, first + count) inside one record: its bytes and its length. */
@@ -114,12 +143,18 @@ static int edf_minmax(const struct recording *recording, size_t channel, int64_t
     while (count > 0) {
         int64_t length;
         const uint8_t *from = piece(edf, signal, first, count, &length);
-        if (edf->header.width == 2)
+        if (signal->has_missing)
+            widen_valid(from, length, edf->header.width, signal->missing, &all);
+        else if (edf->header.width == 2)
             widen16(from, length, &all);
         else
             widen24(from, length, &all);
         first += length;
         count -= length;
+    }
+    if (all.low > all.high) {
+        *low = *high = NAN;
+        return ERR_OK;
     }
     float a = (float)(signal->gain * all.low + signal->offset);
     float b = (float)(signal->gain * all.high + signal->offset);

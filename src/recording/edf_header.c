@@ -12,6 +12,7 @@
 
 #include "base/ns.h"
 #include "base/str.h"
+#include "recording/edf_writer.h"
 
 enum { FIELD_MOST = 80 };
 
@@ -93,6 +94,12 @@ static bool limit_field(struct reading *reading, enum field field, size_t signal
     return number_parse_comma(text, out);
 }
 
+static bool says_missing(const char *transducer)
+{
+    size_t length = strlen(transducer), words = strlen(EDF_MISSING_WORDS);
+    return length >= words && strcmp(transducer + length - words, EDF_MISSING_WORDS) == 0;
+}
+
 /* Gain and offset from the text of the header, or digital values when its limits say nothing. */
 static void scale(struct reading *reading, size_t index, struct edf_signal *signal)
 {
@@ -111,6 +118,8 @@ static void scale(struct reading *reading, size_t index, struct edf_signal *sign
     signal->offset = pmin - signal->gain * dmin;
     signal->physical_min = pmin;
     signal->physical_max = pmax;
+    signal->has_missing = says_missing(signal->transducer) && dmin >= INT32_MIN;
+    signal->missing = signal->has_missing ? (int32_t)dmin : 0;
 }
 
 static int signal_texts(struct reading *reading, size_t index, struct edf_signal *signal,

@@ -24,6 +24,8 @@ struct edf_signal {
     int64_t samples;                   /* in a record */
     int64_t at;                        /* byte of its first sample in a record */
     bool annotations;
+    bool has_missing; /* its digital minimum, `missing`, means that there is no sample */
+    int32_t missing;
 };
 
 struct edf_header {

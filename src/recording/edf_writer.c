@@ -1,9 +1,7 @@
 /*
  * edf_writer.c - writing EDF+ and BDF+ record by record. Keeps nothing of the signal in memory but
- * one record; reads nothing back.
+ * one record. The header is edf_writer_header.c's, reading back edf_readback.c's.
  */
-#include "recording/edf_writer.h"
-
 #include <errno.h>
 #include <fcntl.h>
 #include <math.h>
@@ -13,213 +11,11 @@
 #include <unistd.h>
 
 #include "base/array.h"
-#include "base/ns.h"
-#include "base/str.h"
+#include "recording/edf_writer_impl.h"
 
-enum { ANNOTATION_BYTES = 120, COUNT_AT = 236, NUMBER_SIZE = 8 };
-
-struct writer_channel {
-    int samples;
-    int low, high;       /* digital limits */
-    double gain, offset; /* digital = (physical - offset) / gain, from the header's own text */
-};
-
-struct queued {
-    char *text; /* a whole list, without the final zero */
-    size_t length;
-};
-
-struct edf_writer {
-    int fd;
-    char *path;
-    bool bdf, discontinuous;
-    int width;
-    struct writer_channel *channels;
-    size_t channel_count;
-    size_t annotation_bytes, record_bytes;
-    uint8_t *record;
-    int64_t start_fraction_ns, record_ns, next_onset_ns;
-    int64_t records, clipped;
-    struct queued *queue;
-    size_t queue_first, queue_count, queue_room;
-};
-
-/* ---- header fields ---- */
-
-static int put_field(struct str *header, const char *text, size_t size, const char *name,
-                     struct err *err)
-{
-    size_t length = strlen(text);
-    for (size_t i = 0; i < length; i++) {
-        if (text[i] < 32 || text[i] > 126)
-            return err_set(err, ERR_USAGE, "EDF %s '%s' has a character that is not ASCII", name,
-                           text);
-    }
-    if (length > size)
-        return err_set(err, ERR_USAGE, "EDF %s '%s' is longer than %zu characters", name, text,
-                       size);
-    str_put(header, text);
-    for (size_t i = length; i < size; i++)
-        str_putc(header, ' ');
-    return ERR_OK;
-}
-
-/* The best text of a number that fits into 8 characters. */
-static void number_text(double value, char out[NUMBER_SIZE + 1])
-{
-    char text[40];
-    for (int digits = 8; digits > 0; digits--) {
-        (void)snprintf(text, sizeof text, "%.*g", digits, value);
-        /* EDF readers expect plain decimals: no exponent. */
-        if (strchr(text, 'e'))
-            (void)snprintf(text, sizeof text, "%.*f", digits > 6 ? 6 : digits, value);
-        if (strlen(text) <= NUMBER_SIZE)
-            break;
-    }
-    (void)snprintf(out, NUMBER_SIZE + 1, "%.*s", NUMBER_SIZE, text);
-}
-
-static int put_number(struct str *header, double value, const char *name, struct err *err)
-{
-    char text[NUMBER_SIZE + 1];
-    number_text(value, text);
-    return put_field(header, text, NUMBER_SIZE, name, err);
-}
-
-static void start_texts(int64_t start_civil_ns, char date[9], char clock[9], char plus[12])
-{
-    static const char *const months[] = {"JAN", "FEB", "MAR", "APR", "MAY", "JUN",
-                                         "JUL", "AUG", "SEP", "OCT", "NOV", "DEC"};
-    struct civil c = civil_from_ns(start_civil_ns);
-    (void)snprintf(date, 9, "%02u.%02u.%02u", (unsigned)c.day % 100, (unsigned)c.month % 100,
-                   (unsigned)c.year % 100);
-    (void)snprintf(clock, 9, "%02u.%02u.%02u", (unsigned)c.hour % 100, (unsigned)c.minute % 100,
-                   (unsigned)c.second % 100);
-    (void)snprintf(plus, 12, "%02u-%s-%04u", (unsigned)c.day % 100, months[(c.month - 1) % 12],
-                   (unsigned)c.year % 10000);
-}
-
-static int put_fixed(struct str *header, const struct edf_spec *spec, struct err *err)
-{
-    char date[9], clock[9], plus[12], number[12], recording[128], seconds[NUMBER_SIZE + 1];
-    size_t signals = spec->channel_count + 1;
-    start_texts(spec->start_civil_ns, date, clock, plus);
-    if (spec->bdf)
-        str_put(header, "\xFF"
-                        "BIOSEMI");
-    else
-        str_put(header, "0       ");
-    (void)snprintf(recording, sizeof recording, "Startdate %s %.80s", plus,
-                   spec->recording ? spec->recording : "X X X");
-    int failed = put_field(header, spec->subject ? spec->subject : "X X X X", 80, "patient", err);
-    if (!failed)
-        failed = put_field(header, recording, 80, "recording", err);
-    if (failed)
-        return failed;
-    str_put(header, date);
-    str_put(header, clock);
-    (void)snprintf(number, sizeof number, "%zu", 256 * (signals + 1));
-    failed = put_field(header, number, 8, "header size", err);
-    if (!failed)
-        failed = put_field(header,
-                           spec->bdf ? (spec->discontinuous ? "BDF+D" : "BDF+C")
-                                     : (spec->discontinuous ? "EDF+D" : "EDF+C"),
-                           44, "format", err);
-    if (!failed)
-        failed = put_field(header, "-1", 8, "record count", err);
-    number_text(s_from_ns(spec->record_ns), seconds);
-    double back;
-    if (!failed && (!number_parse(seconds, &back) || ns_from_s(back) != spec->record_ns))
-        failed = err_set(err, ERR_USAGE, "a record of %lld ns cannot be written in 8 characters",
-                         (long long)spec->record_ns);
-    if (!failed)
-        failed = put_field(header, seconds, 8, "record duration", err);
-    (void)snprintf(number, sizeof number, "%zu", signals);
-    return failed ? failed : put_field(header, number, 4, "signal count", err);
-}
-
-struct limits {
-    int low, high;
-};
-
-static struct limits digital_limits(const struct edf_spec *spec,
-                                    const struct edf_channel_spec *channel)
-{
-    if (channel && (channel->digital_min != 0 || channel->digital_max != 0))
-        return (struct limits){channel->digital_min, channel->digital_max};
-    return spec->bdf ? (struct limits){-8388608, 8388607} : (struct limits){-32768, 32767};
-}
-
-/* One per-signal field for all signals, the annotation signal last. */
-static int put_signals(struct str *header, const struct edf_spec *spec, size_t annotation_samples,
-                       struct err *err)
-{
-    int failed = ERR_OK;
-    for (int field = 0; field < 10 && !failed; field++) {
-        for (size_t i = 0; i <= spec->channel_count && !failed; i++) {
-            const struct edf_channel_spec *c = i < spec->channel_count ? &spec->channels[i] : NULL;
-            struct limits limits = digital_limits(spec, c);
-            switch (field) {
-            case 0:
-                failed = put_field(header,
-                                   c           ? c->label
-                                   : spec->bdf ? "BDF Annotations"
-                                               : "EDF Annotations",
-                                   16, "label", err);
-                break;
-            case 1:
-                failed = put_field(header, c ? c->transducer : "", 80, "transducer", err);
-                break;
-            case 2:
-                failed = put_field(header, c ? c->unit : "", 8, "unit", err);
-                break;
-            case 3:
-                failed = put_number(header, c ? c->physical_min : -1, "physical minimum", err);
-                break;
-            case 4:
-                failed = put_number(header, c ? c->physical_max : 1, "physical maximum", err);
-                break;
-            case 5:
-                failed = put_number(header, limits.low, "digital minimum", err);
-                break;
-            case 6:
-                failed = put_number(header, limits.high, "digital maximum", err);
-                break;
-            case 7:
-                failed = put_field(header, c ? c->prefilter : "", 80, "prefilter", err);
-                break;
-            case 8:
-                failed = put_number(header, c ? c->samples_per_record : (double)annotation_samples,
-                                    "samples in a record", err);
-                break;
-            default:
-                failed = put_field(header, "", 32, "reserved", err);
-            }
-        }
-    }
-    if (!failed && str_failed(header))
-        failed = err_memory(err, "a header");
-    return failed;
-}
+enum { ANNOTATION_BYTES = 120 };
 
 /* ---- opening ---- */
-
-static int plan_channel(const struct edf_spec *spec, const struct edf_channel_spec *channel,
-                        struct writer_channel *out, struct err *err)
-{
-    struct limits limits = digital_limits(spec, channel);
-    char low_text[NUMBER_SIZE + 1], high_text[NUMBER_SIZE + 1];
-    double low, high;
-    number_text(channel->physical_min, low_text);
-    number_text(channel->physical_max, high_text);
-    if (!number_parse(low_text, &low) || !number_parse(high_text, &high) || low == high ||
-        limits.high <= limits.low || channel->samples_per_record < 1)
-        return err_set(err, ERR_USAGE, "channel '%s' has no usable range or rate", channel->label);
-    double gain = (high - low) / ((double)limits.high - limits.low);
-    *out = (struct writer_channel){channel->samples_per_record, limits.low, limits.high, gain,
-                                   low - gain * limits.low};
-    return ERR_OK;
-}
 
 static int plan(struct edf_writer *writer, const struct edf_spec *spec, struct err *err)
 {
@@ -231,7 +27,7 @@ static int plan(struct edf_writer *writer, const struct edf_spec *spec, struct e
     writer->channel_count = spec->channel_count;
     size_t samples = 0;
     for (size_t i = 0; i < spec->channel_count && !failed; i++) {
-        failed = plan_channel(spec, &spec->channels[i], &writer->channels[i], err);
+        failed = edf_writer_plan_channel(spec, &spec->channels[i], &writer->channels[i], err);
         samples += (size_t)writer->channels[i].samples;
     }
     writer->bdf = spec->bdf;
@@ -271,9 +67,8 @@ static int write_all(struct edf_writer *writer, const void *data, size_t size, o
 static int write_header(struct edf_writer *writer, const struct edf_spec *spec, struct err *err)
 {
     struct str header = {0};
-    int failed = put_fixed(&header, spec, err);
-    if (!failed)
-        failed = put_signals(&header, spec, writer->annotation_bytes / (size_t)writer->width, err);
+    int failed =
+        edf_writer_put_header(spec, writer->annotation_bytes / (size_t)writer->width, &header, err);
     if (!failed)
         failed = write_all(writer, header.text, header.length, 0, err);
     str_free(&header);
@@ -409,14 +204,15 @@ static void drop_taken(struct edf_writer *writer, size_t taken)
 static int32_t digital(const struct writer_channel *channel, float value, int64_t *clipped)
 {
     if (isnan(value)) {
-        (*clipped)++;
+        *clipped += !channel->lowest_is_missing;
         return channel->low;
     }
     double raw = ((double)value - channel->offset) / channel->gain;
+    int low = channel->low + channel->lowest_is_missing;
     if (raw < channel->low - 0.5 || raw > channel->high + 0.5)
         (*clipped)++;
-    if (raw <= channel->low)
-        return channel->low;
+    if (raw <= low)
+        return low;
     if (raw >= channel->high)
         return channel->high;
     return (int32_t)lrint(raw);
@@ -449,13 +245,14 @@ int edf_writer_record(struct edf_writer *writer, int64_t onset_ns, const float *
         samples += writer->channels[i].samples;
     }
     int failed = fill_annotations(writer, to, onset_ns, &taken, err);
-    off_t header = (off_t)(256 * (writer->channel_count + 2));
+    off_t at = (off_t)(edf_writer_header_bytes(writer->channel_count) +
+                       (size_t)writer->records * writer->record_bytes);
     if (!failed)
-        failed = write_all(writer, writer->record, writer->record_bytes,
-                           header + (off_t)writer->records * (off_t)writer->record_bytes, err);
+        failed = write_all(writer, writer->record, writer->record_bytes, at, err);
     if (failed)
         return failed;
     drop_taken(writer, taken);
+    writer->gapped |= onset_ns != writer->next_onset_ns;
     writer->records++;
     writer->clipped += clipped;
     writer->next_onset_ns = onset_ns + writer->record_ns;
@@ -472,7 +269,12 @@ int64_t edf_writer_clipped(const struct edf_writer *writer)
     return writer->clipped;
 }
 
-static int close_writer(struct edf_writer *writer, struct err *err)
+int64_t edf_writer_records(const struct edf_writer *writer)
+{
+    return writer->records;
+}
+
+int edf_writer_finish(struct edf_writer *writer, struct err *err)
 {
     char count[16];
     if (writer->queue_first < writer->queue_count)
@@ -480,7 +282,11 @@ static int close_writer(struct edf_writer *writer, struct err *err)
                        "%s: %zu annotations found no room; give a record more annotation_bytes",
                        writer->path, writer->queue_count - writer->queue_first);
     (void)snprintf(count, sizeof count, "%-8lld", (long long)writer->records);
-    int failed = write_all(writer, count, 8, COUNT_AT, err);
+    int failed = ERR_OK;
+    if (writer->discontinuous && !writer->gapped)
+        failed = write_all(writer, "C", 1, EDF_KIND_AT, err);
+    if (!failed)
+        failed = write_all(writer, count, 8, EDF_COUNT_AT, err);
     if (!failed && fsync(writer->fd) < 0)
         failed = err_errno(err, writer->path, "flush to disk");
     return failed;
@@ -488,7 +294,7 @@ static int close_writer(struct edf_writer *writer, struct err *err)
 
 int edf_writer_close(struct edf_writer *writer, struct err *err)
 {
-    int failed = close_writer(writer, err);
+    int failed = edf_writer_finish(writer, err);
     writer_free(writer);
     return failed;
 }

@@ -6,7 +6,9 @@
  * Sources: EDF (Kemp et al. 1992), EDF+ (Kemp & Olivan 2003), BDF (24-bit variant, header as EDF).
  *
  * Values outside the physical range are clipped and counted. NaN is written as the digital
- * minimum and counted too: leave a stretch without data out, as a gap, instead.
+ * minimum and counted too, unless the spec gives that value up for it: then a value that is there
+ * is never written as it, and the transducer field of each signal says so in words that the EDF
+ * reader knows (EDF itself has no missing sample).
  */
 #ifndef RECORDING_EDF_WRITER_H
 #define RECORDING_EDF_WRITER_H
@@ -16,6 +18,9 @@
 #include <stdint.h>
 
 #include "base/err.h"
+
+/* Ends the transducer field of a signal whose digital minimum means "no sample". */
+#define EDF_MISSING_WORDS "lowest value = missing"
 
 struct edf_writer;
 
@@ -30,12 +35,13 @@ struct edf_channel_spec {
 };
 
 struct edf_spec {
-    bool bdf;                /* 24-bit BDF+ instead of 16-bit EDF+ */
-    bool discontinuous;      /* +D: records may leave gaps */
-    const char *subject;     /* EDF+ patient field; NULL = "X X X X" */
-    const char *recording;   /* after "Startdate dd-MMM-yyyy "; NULL = "X X X" */
-    int64_t start_civil_ns;  /* fractions of a second go to the first record's onset */
-    int64_t record_ns;       /* duration of a record */
+    bool bdf;               /* 24-bit BDF+ instead of 16-bit EDF+ */
+    bool discontinuous;     /* +D: records may leave gaps */
+    bool lowest_is_missing; /* NaN is the digital minimum; a device's words give way to saying so */
+    const char *subject;    /* EDF+ patient field; NULL = "X X X X" */
+    const char *recording;  /* after "Startdate dd-MMM-yyyy "; NULL = "X X X" */
+    int64_t start_civil_ns; /* fractions of a second go to the first record's onset */
+    int64_t record_ns;      /* duration of a record */
     size_t annotation_bytes; /* room for annotations a record; 0 = 120 */
     const struct edf_channel_spec *channels;
     size_t channel_count;
@@ -46,7 +52,8 @@ MUST_CHECK int edf_writer_open(const char *path, const struct edf_spec *spec,
                                struct edf_writer **out, struct err *err);
 
 /* Appends one record starting onset_ns after the start (ignored, and counted on from the last, in
- * a continuous file). `samples` holds channel after channel, samples_per_record values each. */
+ * a continuous file). `samples` holds channel after channel, samples_per_record values each. On
+ * failure (a full disk) nothing is taken: the same record can be appended again later. */
 MUST_CHECK int edf_writer_record(struct edf_writer *writer, int64_t onset_ns, const float *samples,
                                  struct err *err);
 
@@ -58,10 +65,14 @@ MUST_CHECK int edf_writer_annotate(struct edf_writer *writer, int64_t onset_ns, 
 /* fdatasync: what was appended survives a power cut. */
 MUST_CHECK int edf_writer_sync(struct edf_writer *writer, struct err *err);
 
+int64_t edf_writer_records(const struct edf_writer *writer);
 int64_t edf_writer_clipped(const struct edf_writer *writer); /* samples out of range or NaN */
 
-/* Writes the record count, syncs, closes and frees. Annotations that found no room are an error
- * (the rest of the file is good, with a count of -1). */
+/* Writes the record count (and +C for +D when no gap was left after all: many readers refuse +D)
+ * and syncs: the file is complete. May be tried again after a failure. */
+MUST_CHECK int edf_writer_finish(struct edf_writer *writer, struct err *err);
+/* edf_writer_finish(), then closes and frees, even when that failed. Annotations that found no room
+ * are an error (the rest of the file is good, with a count of -1). */
 MUST_CHECK int edf_writer_close(struct edf_writer *writer, struct err *err);
 /* Closes without patching the count, as a crash would. */
 void edf_writer_abandon(struct edf_writer *writer);
