@@ -19,18 +19,6 @@ static const int64_t chunk_samples =
     (int64_t)OVERVIEW_BLOCK * OVERVIEW_FAN * OVERVIEW_FAN; /* fan ^ (levels - 1) */
 _Static_assert(OVERVIEW_LEVELS == 3, "chunk_samples is written for three levels");
 
-static int64_t ceil_div(int64_t a, int64_t b)
-{
-    return (a + b - 1) / b;
-}
-
-static void widen(struct extremes *all, struct extremes block)
-{
-    /* fmin and fmax leave a NaN out when the other is a number. */
-    all->low = fminf(all->low, block.low);
-    all->high = fmaxf(all->high, block.high);
-}
-
 /* ---- building ---- */
 
 static void remember(struct overview *overview, const struct err *why)
@@ -51,7 +39,7 @@ static void fold(const struct overview *overview, const struct overview_channel 
         int64_t from = block * OVERVIEW_FAN, to = from + OVERVIEW_FAN;
         to = to < channel->blocks[level - 1] ? to : channel->blocks[level - 1];
         for (int64_t i = from; i < to; i++)
-            widen(&all, below[i]);
+            extremes_widen(&all, below[i]);
         out[block] = all;
     }
 }
@@ -264,25 +252,24 @@ static bool built(const struct overview *overview, const struct overview_channel
     return true;
 }
 
-/* Extremes of level-0 blocks [first, end): at each level the few that do not fill a block of the
- * next one up, the rest from there. The last block of a level may be a short one, which its
- * parent covers. */
+struct place {
+    const struct overview *overview;
+    const struct overview_channel *channel;
+};
+
+static struct extremes block_at(const void *context, int level, int64_t index)
+{
+    const struct place *place = context;
+    return place->overview->blocks[place->channel->at[level] + (size_t)index];
+}
+
 static void gather(const struct overview *overview, const struct overview_channel *channel,
                    int64_t first, int64_t end, struct extremes *all)
 {
-    for (int level = 0; level < OVERVIEW_LEVELS; level++) {
-        const struct extremes *blocks = overview->blocks + channel->at[level];
-        bool top = level == OVERVIEW_LEVELS - 1;
-        while (first < end && (top || first % OVERVIEW_FAN != 0))
-            widen(all, blocks[first++]);
-        bool at_end = end == channel->blocks[level];
-        while (first < end && !at_end && end % OVERVIEW_FAN != 0)
-            widen(all, blocks[--end]);
-        if (first >= end)
-            return;
-        first /= OVERVIEW_FAN;
-        end = at_end ? ceil_div(end, OVERVIEW_FAN) : end / OVERVIEW_FAN;
-    }
+    struct place place = {overview, channel};
+    struct extremes_levels levels = {.block = block_at, .context = &place};
+    memcpy(levels.blocks, channel->blocks, sizeof levels.blocks);
+    extremes_gather(&levels, first, end, all);
 }
 
 static bool direct(const struct overview *overview, size_t channel, int64_t first, int64_t end,
@@ -294,7 +281,7 @@ static bool direct(const struct overview *overview, size_t channel, int64_t firs
     if (recording_minmax(overview->recording, channel, first, end - first, &some.low, &some.high,
                          NULL))
         return false;
-    widen(all, some);
+    extremes_widen(all, some);
     return true;
 }
 

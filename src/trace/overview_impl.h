@@ -7,11 +7,7 @@
 #include <pthread.h>
 #include <stdatomic.h>
 
-#include "trace/overview.h"
-
-struct extremes {
-    float low, high; /* both NaN: no valid sample in the block */
-};
+#include "trace/extremes.h"
 
 struct overview_channel {
     int64_t samples;
