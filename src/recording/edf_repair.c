@@ -166,7 +166,7 @@ static int put_at(const struct broken *file, const char *text, size_t size, off_
 /* The count last: until it stands the file is one to be repaired. */
 static int complete(const struct broken *file, struct err *err)
 {
-    char count[16];
+    char count[24];
     bool gapless = false;
     int64_t records = (file->size - file->header_bytes) / file->record_bytes;
     int failed = file->onset_bytes > 0 ? walk(file, &records, &gapless, err) : ERR_OK;

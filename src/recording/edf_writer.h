@@ -22,6 +22,9 @@
 /* Ends the transducer field of a signal whose digital minimum means "no sample". */
 #define EDF_MISSING_WORDS "lowest value = missing"
 
+/* The value that a number has once it is written into a header: 8 characters, no exponent. */
+double edf_number(double value);
+
 struct edf_writer;
 
 struct edf_channel_spec {

@@ -42,6 +42,14 @@ static void number_text(double value, char out[NUMBER_SIZE + 1])
     (void)snprintf(out, NUMBER_SIZE + 1, "%.*s", NUMBER_SIZE, text);
 }
 
+double edf_number(double value)
+{
+    char text[NUMBER_SIZE + 1];
+    double back;
+    number_text(value, text);
+    return number_parse(text, &back) ? back : 0;
+}
+
 static int put_number(struct str *header, double value, const char *name, struct err *err)
 {
     char text[NUMBER_SIZE + 1];

@@ -200,3 +200,15 @@ bool arrival_piece(const struct arrival_fit *fit, int64_t case_minus_boottime_ns
     };
     return true;
 }
+
+void arrival_shift(struct arrival_fit *fit, int64_t by_ns)
+{
+    fit->first_own_ns -= by_ns;
+    fit->last_own_ns -= by_ns;
+    for (int i = 0; i < fit->count; i++)
+        fit->hull[i].own_ns -= by_ns;
+    for (int i = 0; i < ARRIVAL_BINS; i++) {
+        if (fit->least[i].own_ns != NS_NONE)
+            fit->least[i].own_ns -= by_ns;
+    }
+}

@@ -57,6 +57,9 @@ void arrival_add(struct arrival_fit *fit, int64_t own_ns, int64_t boottime_ns);
 bool arrival_piece(const struct arrival_fit *fit, int64_t case_minus_boottime_ns,
                    struct clock_piece *out);
 
+/* The same arrivals with own times less by_ns: own time is counted from elsewhere from now on. */
+void arrival_shift(struct arrival_fit *fit, int64_t by_ns);
+
 /* Whether the stretch is long enough for its link to tell a drift (from some tens of seconds on);
  * until then the slope is 1. */
 bool arrival_tells_drift(const struct arrival_fit *fit);
