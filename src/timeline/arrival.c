@@ -8,7 +8,12 @@
 #include <stddef.h>
 
 #define DRIFT_AFTER_NS (30 * NS_PER_S)
-#define DRIFT_MOST     1e-3
+#define DRIFT_MOST     2e-2
+/* A drift that no crystal has, but a device whose rate is not what it says, is plain much sooner.
+ */
+#define CLEAR_AFTER_NS (5 * NS_PER_S)
+#define CLEAR_DRIFT    1e-3
+enum { CLEAR_POINTS = 8, CLEAR_TIMES = 8 };
 /* A slope over this span is an exact piece to within 1e-12. */
 #define PIECE_SPAN_NS (1000 * NS_PER_S)
 
@@ -135,8 +140,8 @@ static void bin_add(struct arrival_fit *fit, struct arrival_point point)
 }
 
 /* How far the bins' least arrivals lie above the line on average, over the root of how many there
- * are: as the standard error of a mean. */
-static double envelope_error_ns(const struct arrival_fit *fit, double slope)
+ * are: as the standard error of a mean. Where the line was not free to follow them, the mean. */
+static double envelope_error_ns(const struct arrival_fit *fit, double slope, bool held)
 {
     double base = intercept(fit, slope), sum = 0;
     int bins = 0;
@@ -146,7 +151,9 @@ static double envelope_error_ns(const struct arrival_fit *fit, double slope)
         sum += above(fit, &fit->least[i], slope) - base;
         bins++;
     }
-    return bins > 0 ? sum / bins / sqrt(bins) : 0;
+    if (bins == 0)
+        return 0;
+    return held ? sum / bins : sum / bins / sqrt(bins);
 }
 
 /* ---- the fit ---- */
@@ -171,12 +178,17 @@ void arrival_add(struct arrival_fit *fit, int64_t own_ns, int64_t boottime_ns)
 
 bool arrival_tells_drift(const struct arrival_fit *fit)
 {
-    int64_t length_ns = fit->last_own_ns - fit->first_own_ns;
-    if (fit->points < 2 || length_ns < DRIFT_AFTER_NS)
+    double length_ns = (double)(fit->last_own_ns - fit->first_own_ns);
+    if (fit->points < 2 || length_ns < (double)CLEAR_AFTER_NS)
         return false;
+    double slope = hull_slope(fit);
     /* Off by the error at one end and by as much the other way at the other end. */
-    return 2 * envelope_error_ns(fit, hull_slope(fit)) <
-           ARRIVAL_CRYSTAL_PPM * 1e-6 * (double)length_ns;
+    double bend_ns = 2 * envelope_error_ns(fit, slope, false);
+    if (length_ns >= (double)DRIFT_AFTER_NS)
+        return bend_ns < ARRIVAL_CRYSTAL_PPM * 1e-6 * length_ns ||
+               CLEAR_TIMES * bend_ns < fabs(slope) * length_ns;
+    return fit->points >= CLEAR_POINTS && fabs(slope) >= CLEAR_DRIFT && fabs(slope) <= DRIFT_MOST &&
+           CLEAR_TIMES * bend_ns < fabs(slope) * length_ns;
 }
 
 bool arrival_piece(const struct arrival_fit *fit, int64_t case_minus_boottime_ns,
@@ -185,11 +197,14 @@ bool arrival_piece(const struct arrival_fit *fit, int64_t case_minus_boottime_ns
     if (fit->points == 0)
         return false;
     bool drifts = arrival_tells_drift(fit);
-    double slope = drifts ? fmin(fmax(hull_slope(fit), -DRIFT_MOST), DRIFT_MOST) : 0;
+    double slope = drifts ? hull_slope(fit) : 0;
+    bool held = fabs(slope) > DRIFT_MOST;
+    if (held)
+        slope = slope < 0 ? -DRIFT_MOST : DRIFT_MOST;
     double length_ns = (double)(fit->last_own_ns - fit->first_own_ns);
-    double held_ns = drifts ? 0 : ARRIVAL_CRYSTAL_PPM * 1e-6 * length_ns;
-    double error_ns =
-        hypot(hypot(envelope_error_ns(fit, slope), held_ns), (double)ARRIVAL_LEAST_NS);
+    double unknown_ns = drifts ? 0 : ARRIVAL_CRYSTAL_PPM * 1e-6 * length_ns;
+    double spread_ns = envelope_error_ns(fit, slope, held);
+    double error_ns = hypot(hypot(spread_ns, unknown_ns), (double)ARRIVAL_LEAST_NS);
     *out = (struct clock_piece){
         .at_ns = fit->first_own_ns,
         .span_ns = PIECE_SPAN_NS,

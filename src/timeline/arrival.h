@@ -53,15 +53,16 @@ struct arrival_fit {
 void arrival_add(struct arrival_fit *fit, int64_t own_ns, int64_t boottime_ns);
 
 /* The fit so far, as a piece from the first point on whose case times are boottimes plus
- * case_minus_boottime_ns. Drifts beyond 1000 ppm are held there. false when nothing has come. */
+ * case_minus_boottime_ns. A device's rate may be other than it says: drifts up to
+ * 2 % are followed, and greater ones held there. false when nothing has come. */
 bool arrival_piece(const struct arrival_fit *fit, int64_t case_minus_boottime_ns,
                    struct clock_piece *out);
 
 /* The same arrivals with own times less by_ns: own time is counted from elsewhere from now on. */
 void arrival_shift(struct arrival_fit *fit, int64_t by_ns);
 
-/* Whether the stretch is long enough for its link to tell a drift (from some tens of seconds on);
- * until then the slope is 1. */
+/* Whether the stretch is long enough for its link to tell a drift: from 30 s on, or from 5 s on one
+ * that no crystal has. Until then the slope is 1. */
 bool arrival_tells_drift(const struct arrival_fit *fit);
 
 #endif
