@@ -41,6 +41,7 @@ enum event_kind {
     EVENT_KEY,
     EVENT_MOUSE,
     EVENT_RESIZE, /* the screen has another size, or was covered: draw again */
+    EVENT_READY,  /* the terminal has all of a frame that it did not take at once: draw again */
     EVENT_TICK,   /* the wait is over and nothing came */
     EVENT_END,    /* the terminal is gone, or the program was asked to end */
 };
@@ -52,7 +53,7 @@ struct event {
     uint32_t key;
     enum mouse_action mouse;
     int row, column;     /* of the mouse */
-    int64_t boottime_ns; /* CLOCK_BOOTTIME when input woke the program */
+    int64_t boottime_ns; /* CLOCK_BOOTTIME when its first byte arrived, whatever went on then */
     int64_t utc_ns;      /* the wall clock at the same moment */
 };
 

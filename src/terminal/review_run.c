@@ -40,6 +40,8 @@ static int step(struct session *session, struct review *review, struct canvas *c
         return ERR_OK;
     case EVENT_RESIZE:
         return resize(session, review, canvas, err);
+    case EVENT_READY:
+        return ERR_OK;
     case EVENT_TICK:
         *draw = review_tick(review);
         return ERR_OK;
@@ -73,7 +75,7 @@ int review_run(struct casefile *casefile, int64_t at_ns, const char *remark, str
     struct canvas canvas = {0};
     int failed = review_new(casefile, &review, err);
     if (!failed)
-        failed = session_open(&session, err);
+        failed = session_open(false, &session, err);
     if (!failed)
         failed = resize(session, review, &canvas, err);
     if (!failed && at_ns != NS_NONE)

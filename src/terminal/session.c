@@ -2,7 +2,9 @@
  * session.c - terminal set-up, input and output. Draws nothing of its own.
  *
  * ncurses' own screen is never touched after the start: keys are read through a pad, which makes
- * wget_wch() leave the screen to the painter.
+ * wget_wch() leave the screen to the painter. Nor does ncurses write to the terminal after the
+ * start, as it waits until all of it is taken: what gives the terminal back is put together from
+ * terminfo here, and goes out as frames do.
  */
 #define NCURSES_WIDECHAR 1
 #include "terminal/session.h"
@@ -17,26 +19,37 @@
 #include <string.h>
 #include <sys/ioctl.h>
 #include <termios.h>
-#include <time.h>
 #include <unistd.h>
 
-#include "base/ns.h"
+#include "terminal/key_reader.h"
+#include "terminal/outlet.h"
 #include "terminal/painter.h"
 
 enum { ESCAPE_DELAY_MS = 25, BASIC_COLOURS = 8, MANY_COLOURS = 256 };
+/* How long the terminal may take to show what is pending when it is given back. */
+enum { LEAVING_MS = 200 };
 
 struct session {
     SCREEN *screen;
     WINDOW *keys; /* a pad: reading from it paints nothing */
+    struct key_reader *reader;
+    uint64_t next_byte; /* number of the first byte of the next key */
     struct painter painter;
-    struct str bytes;
+    struct outlet outlet;
+    struct termios modes; /* while the terminal is ours */
+    struct str enter;     /* takes the terminal over, as ncurses did at the start */
     int rows, columns;
     int ctrl_left, ctrl_right, ctrl_up, ctrl_down; /* ncurses' codes for them */
 };
 
 /* What signal handlers may touch. */
 static int signal_pipe[2] = {-1, -1};
-static struct termios terminal_before;
+static struct {
+    int fd; /* the outlet's */
+    struct termios modes;
+    char leave[256];
+    size_t length; /* of leave */
+} before;
 
 static const int caught[] = {SIGWINCH, SIGTERM, SIGHUP, SIGINT, SIGTSTP};
 static const int crashes[] = {SIGSEGV, SIGBUS, SIGABRT, SIGFPE, SIGILL};
@@ -54,10 +67,9 @@ static void on_signal(int number)
 /* Gives the terminal back with async-signal-safe calls alone, then crashes as before. */
 static void on_crash(int number)
 {
-    static const char leave[] = "\033[?1000l\033[?1006l\033[0m\033[?25h\033[?1049l\r\n";
-    ssize_t written = write(STDOUT_FILENO, leave, sizeof leave - 1);
+    ssize_t written = write(before.fd, before.leave, before.length);
     (void)written;
-    (void)tcsetattr(STDIN_FILENO, TCSANOW, &terminal_before);
+    (void)tcsetattr(before.fd, TCSANOW, &before.modes);
     (void)raise(number);
 }
 
@@ -85,11 +97,18 @@ static void read_size(struct session *session)
     }
 }
 
+/* A capability of the terminal; NULL when it has none of this name. */
+static const char *capability(const char *name)
+{
+    const char *text = tigetstr(name);
+    return text == (const char *)-1 ? NULL : text;
+}
+
 /* ncurses' code for an extended key such as "kLFT5", defining it when terminfo does not know it. */
 static int extended_key(const char *name, const char *usual, int fallback)
 {
-    const char *sequence = tigetstr(name);
-    if (!sequence || sequence == (const char *)-1)
+    const char *sequence = capability(name);
+    if (!sequence)
         sequence = usual;
     int code = key_defined(sequence);
     if (code > 0)
@@ -104,9 +123,62 @@ static enum theme_depth colour_depth(void)
     return colours >= MANY_COLOURS ? THEME_256 : colours >= BASIC_COLOURS ? THEME_8 : THEME_NONE;
 }
 
+/* Appends a capability. Delays that old terminals ask for ("$<2>") are left out. */
+static void put_capability(struct str *out, const char *text)
+{
+    while (text && *text) {
+        const char *delay = strstr(text, "$<");
+        const char *end = delay ? strchr(delay, '>') : NULL;
+        str_put_n(out, text, end ? (size_t)(delay - text) : strlen(text));
+        text = end ? end + 1 : "";
+    }
+}
+
+/* What ncurses would send to take the terminal over, and to give it back. */
+static int plan_switches(struct session *session, struct err *err)
+{
+    struct str leave = {0};
+    const char *mouse = capability("XM"), *to = capability("cup");
+    put_capability(&session->enter, capability("smcup"));
+    put_capability(&session->enter, capability("smkx"));
+    put_capability(&session->enter, capability("civis"));
+    if (mouse)
+        put_capability(&session->enter, tparm(mouse, 1L));
+    else if (capability("kmous"))
+        str_put(&session->enter, "\033[?1000h");
+    str_put(&leave, "\033[?1000l\033[?1006l\033[0m");
+    put_capability(&leave, capability("cnorm"));
+    put_capability(&leave, capability("rmkx"));
+    /* Where there is no second screen to leave, the cursor goes below what was shown. */
+    if (to)
+        put_capability(&leave, tparm(to, (long)LINES - 1, 0L));
+    put_capability(&leave, capability("rmcup"));
+    str_put(&leave, "\r");
+    bool failed =
+        str_failed(&leave) || str_failed(&session->enter) || leave.length > sizeof before.leave;
+    if (!failed) {
+        memcpy(before.leave, leave.text, leave.length);
+        before.length = leave.length;
+    }
+    str_free(&leave);
+    return failed ? err_memory(err, "the terminal") : ERR_OK;
+}
+
+static void set_up_keys(struct session *session)
+{
+    (void)keypad(session->keys, TRUE);
+    (void)nodelay(session->keys, TRUE);
+    (void)mousemask(BUTTON1_PRESSED | BUTTON4_PRESSED | BUTTON5_PRESSED, NULL);
+    (void)mouseinterval(0);
+    session->ctrl_left = extended_key("kLFT5", "\033[1;5D", KEY_MAX + 1);
+    session->ctrl_right = extended_key("kRIT5", "\033[1;5C", KEY_MAX + 2);
+    session->ctrl_up = extended_key("kUP5", "\033[1;5A", KEY_MAX + 3);
+    session->ctrl_down = extended_key("kDN5", "\033[1;5B", KEY_MAX + 4);
+}
+
 static int set_up(struct session *session, struct err *err)
 {
-    session->screen = newterm(NULL, stdout, stdin);
+    session->screen = newterm(NULL, stdout, key_reader_stream(session->reader));
     if (!session->screen) {
         const char *term = getenv("TERM");
         return err_set(err, ERR_USAGE, "terminal '%s' is not known here; try TERM=xterm-256color",
@@ -117,37 +189,44 @@ static int set_up(struct session *session, struct err *err)
     (void)nonl();
     (void)curs_set(0);
     (void)set_escdelay(ESCAPE_DELAY_MS);
-    (void)refresh();
     session->keys = newpad(1, 1);
     if (!session->keys)
         return err_memory(err, "the terminal");
-    (void)keypad(session->keys, TRUE);
-    (void)nodelay(session->keys, TRUE);
-    (void)mousemask(BUTTON1_PRESSED | BUTTON4_PRESSED | BUTTON5_PRESSED, NULL);
-    (void)mouseinterval(0);
-    session->ctrl_left = extended_key("kLFT5", "\033[1;5D", KEY_MAX + 1);
-    session->ctrl_right = extended_key("kRIT5", "\033[1;5C", KEY_MAX + 2);
-    session->ctrl_up = extended_key("kUP5", "\033[1;5A", KEY_MAX + 3);
-    session->ctrl_down = extended_key("kDN5", "\033[1;5B", KEY_MAX + 4);
+    set_up_keys(session);
+    (void)refresh();
     bool ascii = strcmp(nl_langinfo(CODESET), "UTF-8") != 0;
     painter_init(&session->painter, colour_depth(), ascii);
     read_size(session);
-    return ERR_OK;
+    if (tcgetattr(before.fd, &session->modes) < 0)
+        return err_errno(err, "the terminal", "set up");
+    return plan_switches(session, err);
 }
 
-int session_open(struct session **out, struct err *err)
+static int open_parts(struct session *session, bool keys_from_tty, struct err *err)
 {
-    if (!isatty(STDIN_FILENO) || !isatty(STDOUT_FILENO) ||
-        tcgetattr(STDIN_FILENO, &terminal_before) < 0)
+    int failed = outlet_open(&session->outlet, err);
+    before.fd = session->outlet.fd;
+    if (!failed && tcgetattr(before.fd, &before.modes) < 0)
+        failed = err_errno(err, "the terminal", "ask");
+    if (!failed)
+        failed = key_reader_start(keys_from_tty, &session->reader, err);
+    return failed ? failed : set_up(session, err);
+}
+
+int session_open(bool keys_from_tty, struct session **out, struct err *err)
+{
+    if ((!keys_from_tty && !isatty(STDIN_FILENO)) || !isatty(STDOUT_FILENO))
         return err_set(err, ERR_USAGE, "needs a terminal for input and output");
     struct session *made = calloc(1, sizeof *made);
     if (!made)
         return err_memory(err, "the terminal");
+    made->outlet.fd = -1;
+    before.length = 0;
     if (pipe2(signal_pipe, O_CLOEXEC | O_NONBLOCK) < 0) {
         free(made);
         return err_errno(err, "a pipe", "open");
     }
-    int failed = set_up(made, err);
+    int failed = open_parts(made, keys_from_tty, err);
     if (failed) {
         session_close(made);
         return failed;
@@ -157,22 +236,31 @@ int session_open(struct session **out, struct err *err)
     return ERR_OK;
 }
 
+/* Nothing may wait here either: the modes change at once, whatever is still on its way. */
+static void give_back(struct session *session)
+{
+    outlet_end(&session->outlet, before.leave, before.length, LEAVING_MS);
+    (void)tcsetattr(session->outlet.fd, TCSANOW, &before.modes);
+}
+
 void session_close(struct session *session)
 {
     if (!session)
         return;
+    if (session->screen)
+        give_back(session);
     set_handlers(false);
     if (session->keys)
         (void)delwin(session->keys);
-    if (session->screen) {
-        (void)endwin();
+    if (session->screen)
         delscreen(session->screen);
-    }
+    key_reader_stop(session->reader);
+    outlet_close(&session->outlet);
     (void)close(signal_pipe[0]);
     (void)close(signal_pipe[1]);
     signal_pipe[0] = signal_pipe[1] = -1;
     painter_fini(&session->painter);
-    str_free(&session->bytes);
+    str_free(&session->enter);
     free(session);
 }
 
@@ -191,12 +279,10 @@ void session_repaint(struct session *session)
  * again. Stops by SIGSTOP, as SIGTSTP is what brought us here. */
 static void suspend(struct session *session, struct event *out)
 {
-    (void)endwin();
+    give_back(session);
     (void)raise(SIGSTOP);
-    (void)reset_prog_mode();
-    (void)clearok(curscr, TRUE);
-    (void)refresh();
-    (void)curs_set(0);
+    (void)tcsetattr(session->outlet.fd, TCSANOW, &session->modes);
+    str_put_n(&session->outlet.bytes, session->enter.text, session->enter.length);
     read_size(session);
     session_repaint(session);
     out->kind = EVENT_RESIZE;
@@ -254,13 +340,29 @@ static uint32_t character_key(wint_t character)
     return (uint32_t)character;
 }
 
+/* Moves on to the next key's first byte. A character is as long as its bytes; a key with a name
+ * ends with the last byte that was read; and without any, all that was read meant nothing. */
+static void step_over(struct session *session, int answer, wint_t character)
+{
+    uint64_t taken = key_reader_taken(session->reader);
+    char bytes[4];
+    size_t length = session->painter.ascii ? 1 : utf8_put(bytes, (uint32_t)character);
+    bool whole = answer == OK && session->next_byte + length <= taken;
+    session->next_byte = whole ? session->next_byte + length : taken;
+}
+
 /* Takes one key out of ncurses, if one is there. */
 static bool take_key(struct session *session, struct event *out)
 {
-    wint_t character;
+    wint_t character = 0;
     int answer = wget_wch(session->keys, &character);
+    uint64_t byte = session->next_byte;
+    step_over(session, answer, character);
     if (answer == ERR)
         return false;
+    struct key_stamp stamp = key_reader_stamp(session->reader, byte);
+    out->boottime_ns = stamp.boottime_ns;
+    out->utc_ns = stamp.utc_ns;
     out->kind = EVENT_NOTHING;
     if (answer == KEY_CODE_YES && character == KEY_MOUSE) {
         take_mouse(out);
@@ -291,57 +393,59 @@ static void take_signals(struct session *session, struct event *out)
     session_repaint(session);
 }
 
-static int64_t clock_ns(clockid_t clock)
+static void stamp_now(struct event *out)
 {
-    struct timespec now = {0};
-    (void)clock_gettime(clock, &now);
-    return now.tv_sec * NS_PER_S + now.tv_nsec;
+    struct key_stamp stamp = key_stamp_now();
+    out->boottime_ns = stamp.boottime_ns;
+    out->utc_ns = stamp.utc_ns;
 }
 
-static void stamp(struct event *out)
+/* The terminal takes more of what is pending. */
+static void write_on(struct session *session, struct event *out)
 {
-    out->boottime_ns = clock_ns(CLOCK_BOOTTIME);
-    out->utc_ns = clock_ns(CLOCK_REALTIME);
+    if (outlet_push(&session->outlet, NULL))
+        out->kind = EVENT_END;
+    else
+        out->kind = outlet_busy(&session->outlet) ? EVENT_NOTHING : EVENT_READY;
 }
 
 void session_wait(struct session *session, int timeout_ms, struct event *out)
 {
     *out = (struct event){.kind = EVENT_TICK};
-    stamp(out);
     if (take_key(session, out))
         return;
-    struct pollfd waiting[] = {{STDIN_FILENO, POLLIN, 0}, {signal_pipe[0], POLLIN, 0}};
-    int ready = poll(waiting, 2, timeout_ms);
-    stamp(out);
+    bool busy = outlet_busy(&session->outlet);
+    struct pollfd waiting[] = {{fileno(key_reader_stream(session->reader)), POLLIN, 0},
+                               {signal_pipe[0], POLLIN, 0},
+                               {busy ? session->outlet.fd : -1, POLLOUT, 0}};
+    int ready = poll(waiting, 3, timeout_ms);
+    stamp_now(out);
     if (ready < 0)
         out->kind = EVENT_NOTHING; /* a signal: its byte is in the pipe */
     else if (waiting[1].revents)
         take_signals(session, out);
     else if (waiting[0].revents && !take_key(session, out))
-        /* A terminal that hung up stays readable, with nothing to read. */
+        /* The reader hangs up when the terminal does. */
         out->kind = waiting[0].revents & ~POLLIN ? EVENT_END : EVENT_NOTHING;
+    else if (!waiting[0].revents && waiting[2].revents)
+        write_on(session, out);
 }
 
-static int write_all(const char *bytes, size_t count, struct err *err)
+bool session_busy(const struct session *session)
 {
-    while (count > 0) {
-        ssize_t written = write(STDOUT_FILENO, bytes, count);
-        if (written < 0 && errno != EINTR && errno != EAGAIN)
-            return err_errno(err, "the terminal", "write to");
-        if (written < 0 && errno == EAGAIN)
-            (void)poll(&(struct pollfd){STDOUT_FILENO, POLLOUT, 0}, 1, -1);
-        bytes += written > 0 ? written : 0;
-        count -= written > 0 ? (size_t)written : 0;
-    }
-    return ERR_OK;
+    return outlet_busy(&session->outlet);
 }
 
 int session_show(struct session *session, const struct canvas *canvas, struct err *err)
 {
-    str_clear(&session->bytes);
-    int failed = painter_paint(&session->painter, canvas, &session->bytes, err);
-    if (!failed && session->bytes.length > 0)
-        failed = write_all(session->bytes.text, session->bytes.length, err);
+    /* Keys may keep session_wait() from writing on. */
+    int failed = outlet_push(&session->outlet, err);
+    if (!failed && outlet_busy(&session->outlet))
+        return ERR_OK;
+    if (!failed)
+        failed = painter_paint(&session->painter, canvas, &session->outlet.bytes, err);
+    if (!failed)
+        failed = outlet_push(&session->outlet, err);
     if (failed)
         session_repaint(session); /* what is on the screen now is anybody's guess */
     return failed;
