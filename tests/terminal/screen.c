@@ -209,17 +209,29 @@ bool screen_taken(const struct screen *screen)
     return screen->taken;
 }
 
-bool screen_cooked(const struct screen *screen)
+/* Waits until these local and input modes are all on, or all off. */
+static bool modes_become(const struct screen *screen, tcflag_t local, tcflag_t input, bool on)
 {
     struct termios modes;
-    const tcflag_t ordinary = ICANON | ECHO;
     int64_t end = now_ms() + PATIENCE_MS;
     do {
-        if (tcgetattr(screen->terminal, &modes) == 0 && (modes.c_lflag & ordinary) == ordinary)
+        if (tcgetattr(screen->terminal, &modes) == 0 &&
+            (modes.c_lflag & local) == (on ? local : 0) &&
+            (modes.c_iflag & input) == (on ? input : 0))
             return true;
         (void)poll(NULL, 0, 5);
     } while (now_ms() < end);
     return false;
+}
+
+bool screen_cooked(const struct screen *screen)
+{
+    return modes_become(screen, ICANON | ECHO | ISIG, ICRNL | IXON, true);
+}
+
+bool screen_raw(const struct screen *screen)
+{
+    return modes_become(screen, ICANON | ECHO | ISIG, ICRNL | IXON, false);
 }
 
 int screen_end(struct screen *screen)

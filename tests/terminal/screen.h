@@ -29,8 +29,9 @@ const char *screen_row(struct screen *screen, int row);
 bool screen_taken(const struct screen *screen);
 /* Waits until it has left the alternate screen. */
 bool screen_left(struct screen *screen);
-/* Waits until the terminal is in its ordinary mode: lines, echo. */
+/* Waits until the terminal is in its ordinary mode: lines, echo, ^C, ^S; or has none of these. */
 bool screen_cooked(const struct screen *screen);
+bool screen_raw(const struct screen *screen);
 
 /* Waits until the program ends; its exit status, -1 when it does not end or was killed. Frees. */
 int screen_end(struct screen *screen);

@@ -30,6 +30,8 @@ static struct screen *start(int rows, int columns)
     const char *const argv[] = {getenv("INCISURA_ASAN"), "review", recording, NULL};
     struct screen *screen = screen_start(rows, columns, argv);
     screen_check(screen, screen_shows(screen, "ECG II") && screen_taken(screen), "opens");
+    screen_check(screen, screen_raw(screen),
+                 "no echo, no lines, no ^C and ^S of the terminal's own");
     return screen;
 }
 
@@ -63,6 +65,7 @@ static void test_stop(bool by_key)
     screen_signal(screen, SIGCONT);
     bool painted = screen_shows(screen, "ECG II") && screen_shows(screen, "+00:00:00");
     screen_check(screen, painted && screen_taken(screen), "going on paints it all again");
+    screen_check(screen, screen_raw(screen), "and has its modes again");
     screen_type(screen, "?");
     screen_check(screen, screen_shows(screen, "keys that work now"), "and keys work");
     screen_type(screen, "?");
