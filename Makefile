@@ -174,7 +174,7 @@ fuzz: fuzzers
 	@tests/fuzz/run $(FUZZ_SECONDS)
 
 BENCHES := $(patsubst tests/bench/%.c,build/bench/%,$(wildcard tests/bench/*.c))
-build/bench/%: tests/bench/%.c $(release_LIB)
+build/bench/%: tests/bench/%.c $(release_SCREENS) $(release_LIB)
 	@mkdir -p $(@D)
 	@$(CC) $(BASE_CFLAGS) $(release_CFLAGS) $^ $(LIBS) -o $@
 -include $(BENCHES:=.d)
