@@ -9,6 +9,7 @@
 #include "base/array.h"
 #include "base/ns.h"
 #include "base/str.h"
+#include "monitor.h"
 #include "output.h"
 #include "recording/edf_writer.h"
 
@@ -118,14 +119,16 @@ static int write_device(const struct device *device, const char *folder, struct 
 static int write_monitor(const struct signals *signals, const char *folder, struct err *err)
 {
     const struct scenario *scenario = &signals->scenario;
-    const struct device_channel channels[] = {
-        {{"ECG II", "mV", "AgCl electrodes", "", -5, 5, 0, 0, ECG_HZ}, signals->ecg_ii},
-        {{"ECG V5", "mV", "AgCl electrodes", "", -5, 5, 0, 0, ECG_HZ}, signals->ecg_v5},
-        {{"ABP", "mm[Hg]", "radial line", "", -50, 350, 0, 0, PRESSURE_HZ}, signals->abp},
-        {{"PLETH", "%", "finger clip", "", -10, 10, 0, 0, PRESSURE_HZ}, signals->pleth},
-        {{"RESP", "Ohm", "thoracic impedance", "", -5, 5, 0, 0, RESP_HZ}, signals->resp},
-        {{"CO2", "mm[Hg]", "sidestream", "", 0, 100, 0, 0, CO2_HZ}, signals->co2},
-    };
+    struct monitor_channel taken[MONITOR_CHANNELS];
+    struct device_channel channels[MONITOR_CHANNELS];
+    monitor_channels(signals, taken);
+    for (size_t c = 0; c < MONITOR_CHANNELS; c++) {
+        const struct monitor_channel *from = &taken[c];
+        channels[c] =
+            (struct device_channel){{from->label, from->unit, from->transducer, "",
+                                     from->physical_min, from->physical_max, 0, 0, from->rate_hz},
+                                    from->samples};
+    }
     double fifth = scenario->length_s / 5;
     const struct device_note notes[] = {
         {0.10 * fifth, "Cuff inflated"},         {0.85 * fifth, "Cuff inflated"},
@@ -139,7 +142,7 @@ static int write_monitor(const struct signals *signals, const char *folder, stru
                                   .gap_at_s = scenario->gap_at_s,
                                   .gap_until_s = scenario->gap_at_s + scenario->gap_span_s,
                                   .channels = channels,
-                                  .channel_count = sizeof channels / sizeof *channels,
+                                  .channel_count = MONITOR_CHANNELS,
                                   .notes = notes,
                                   .note_count = sizeof notes / sizeof *notes};
     return write_device(&device, folder, err);
