@@ -104,6 +104,7 @@ clean:
 help:
 	@echo 'make            build build/incisura'
 	@echo 'make demo       install what is missing, build, make a demo case and open it'
+	@echo 'make demo-live  the same operation live: the theatre plays, the live screen waits for keys'
 	@echo 'make test       install what tests need and run them all'
 	@echo 'make bench      measure speed against a plain loop over the same samples'
 	@echo 'make fuzz       run every fuzzer for FUZZ_SECONDS (60)'
@@ -114,7 +115,7 @@ help:
 
 # --- the demo's simulated theatre -------------------------------------------------------------
 
-.PHONY: demo demo-case
+.PHONY: demo demo-case demo-live demo-programs
 DEMO_SOURCES := $(wildcard demo/*.c)
 build/demo/%.o: demo/%.c
 	@mkdir -p $(@D)
@@ -129,6 +130,12 @@ demo-case: build build/theatre
 demo: packages
 	@$(MAKE) -j$$(nproc) demo-case
 	@demo/open
+
+demo-programs: build build/theatre
+
+demo-live: packages
+	@$(MAKE) -j$$(nproc) demo-programs
+	@demo/live
 
 # --- tests ------------------------------------------------------------------------------------
 
