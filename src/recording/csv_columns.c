@@ -39,46 +39,12 @@ struct parsing {
     struct err *err;
 };
 
-static bool is_missing(const char *text)
-{
-    return *text == '\0' || ascii_equal(text, "nan") || ascii_equal(text, "na") ||
-           ascii_equal(text, "null") || strcmp(text, "-") == 0 || strcmp(text, "--") == 0;
-}
-
 static bool parse_number(const struct parsing *parsing, const char *text, double *out)
 {
     return parsing->delimiter == ',' ? number_parse(text, out) : number_parse_comma(text, out);
 }
 
 /* ---- header ---- */
-
-/* "ECG II [mV]" or "ECG II (mV)" into label and unit; a unit may have brackets itself: mm[Hg]. */
-static int split_header(struct parsing *parsing, const char *text, const char **label,
-                        const char **unit)
-{
-    size_t length = strlen(text);
-    const char *open = NULL;
-    if (length > 0 && text[length - 1] == ']')
-        open = strchr(text, '[');
-    else if (length > 0 && text[length - 1] == ')')
-        open = strchr(text, '(');
-    size_t label_length = open ? (size_t)(open - text) : length;
-    size_t unit_length = open ? length - label_length - 2 : 0;
-    *label = recording_text(parsing->arena, (const uint8_t *)text, label_length);
-    *unit = recording_text(parsing->arena, (const uint8_t *)(open ? open + 1 : text), unit_length);
-    return *label && *unit ? ERR_OK : err_memory(parsing->err, "a column");
-}
-
-static bool is_time_name(const char *label)
-{
-    static const char *const names[] = {"t",         "time",     "t_s",       "time_s", "seconds",
-                                        "timestamp", "datetime", "date time", "clock"};
-    for (size_t i = 0; i < sizeof names / sizeof *names; i++) {
-        if (ascii_equal(label, names[i]))
-            return true;
-    }
-    return false;
-}
 
 static int add_column(struct parsing *parsing, size_t index, const char *label, const char *unit)
 {
@@ -118,10 +84,12 @@ static int end_header(struct parsing *parsing)
         return err_memory(parsing->err, "the columns");
     for (size_t i = 0; i < parsing->width; i++) {
         const char *label = "", *unit = "";
-        int failed = bare ? ERR_OK : split_header(parsing, parsing->header[i], &label, &unit);
+        int failed = bare ? ERR_OK
+                          : csv_split_header(parsing->arena, parsing->header[i], &label, &unit,
+                                             parsing->err);
         if (failed)
             return failed;
-        if (parsing->time_column == NO_COLUMN && is_time_name(label)) {
+        if (parsing->time_column == NO_COLUMN && csv_time_name(label)) {
             parsing->time_column = (int)i;
             parsing->time_scale = ascii_equal(unit, "ms") ? 1e6 : 1e9;
         } else {
@@ -200,7 +168,7 @@ static void value_cell(struct parsing *parsing, size_t index, const char *text)
         parsing->failed = ERR_MEMORY;
         return;
     }
-    if (!is_missing(text)) {
+    if (!csv_text_missing(text)) {
         if (parse_number(parsing, text, &value)) {
             column->numbers++;
         } else {

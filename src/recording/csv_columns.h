@@ -41,4 +41,15 @@ MUST_CHECK int csv_columns_read(const uint8_t *data, size_t size, const char *pa
                                 struct arena *arena, struct csv_columns *out, struct err *err);
 void csv_columns_free(struct csv_columns *columns);
 
+/* ---- csv_header.c ---- */
+
+/* Does a cell say that there is no value? */
+bool csv_text_missing(const char *text);
+/* Is it the label of a time column? */
+bool csv_time_name(const char *label);
+/* "ECG II [mV]" or "ECG II (mV)" into label and unit, in `arena`; a unit may have brackets itself:
+ * mm[Hg]. */
+MUST_CHECK int csv_split_header(struct arena *arena, const char *text, const char **label,
+                                const char **unit, struct err *err);
+
 #endif

@@ -53,7 +53,7 @@ struct stream_sink {
 
 struct stream_parser;
 
-/* `rate_hz` of lines without a time column; 0 = they have one. */
+/* `rate_hz` of lines without a time column; 0 = they have one. The sink is copied. */
 MUST_CHECK int stream_parser_new(double rate_hz, const struct stream_sink *sink,
                                  struct stream_parser **out, struct err *err);
 void stream_parser_free(struct stream_parser *parser);
