@@ -140,6 +140,11 @@ Test(live_stream, a_reconnection_is_a_gap_of_the_right_length)
     cr_expect_eq(part.pieces[0].case_ns, 0);
     cr_expect_eq(part.pieces[1].at_ns, 5050 * NS_PER_MS + 7300 * NS_PER_MS);
     cr_expect_eq(part.pieces[1].case_ns, 5050 * NS_PER_MS + 7300 * NS_PER_MS);
+    float padded[7];
+    cr_assert_eq(trace_read(feed_trace(&feed, 0, NULL), 504, 7, padded, &err), 0);
+    cr_expect(!isnan(padded[0]) && !isnan(padded[6]));
+    for (int i = 1; i < 6; i++)
+        cr_expect(isnan(padded[i]), "what was not received is missing");
     expect_gap(&feed, 5100 * NS_PER_MS, 7250 * NS_PER_MS);
 }
 
