@@ -3,13 +3,13 @@
  */
 #include "case/mark_entry.h"
 
+#include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 
 #include "base/str.h"
 #include "codebook/unit.h"
-
-enum { UNIT_SIZE = 64 };
+#include "codebook/unit_scale.h"
 
 static bool given(const char *text)
 {
@@ -69,7 +69,7 @@ static int take_unit(const char *text, const struct code *code, struct arena *ar
         out->unit = code->unit;
         return ERR_OK;
     }
-    char unit[UNIT_SIZE];
+    char unit[UNIT_TEXT_SIZE];
     unit_normalise(text, unit, sizeof unit);
     if (!unit_valid(unit))
         return err_set(err, ERR_USAGE,
@@ -124,4 +124,52 @@ int mark_entry(const struct casefile *casefile, const struct mark_text *text, st
     made.state = mark_state_of(code, &made);
     *out = made;
     return ERR_OK;
+}
+
+int value_entry(const char *text, const char *usual_unit, double *value, char unit[UNIT_TEXT_SIZE],
+                struct err *err)
+{
+    char number[UNIT_TEXT_SIZE], typed[UNIT_TEXT_SIZE / 2], made[UNIT_TEXT_SIZE];
+    double read;
+    text += strspn(text, " ");
+    size_t length = strspn(text, "+-.,0123456789");
+    const char *rest = text + length + strspn(text + length, " ");
+    size_t unit_length = strlen(rest);
+    while (unit_length > 0 && rest[unit_length - 1] == ' ')
+        unit_length--;
+    if (length >= sizeof number || unit_length >= sizeof typed)
+        return err_set(err, ERR_USAGE, "too long; a number, then perhaps a unit: 100 mg");
+    (void)snprintf(number, sizeof number, "%.*s", (int)length, text);
+    (void)snprintf(typed, sizeof typed, "%.*s", (int)unit_length, rest);
+    if (!number_parse_comma(number, &read))
+        return err_set(err, ERR_USAGE, "a number, then perhaps a unit: 100 mg");
+    if (*typed)
+        unit_normalise(typed, made, sizeof made);
+    else
+        (void)snprintf(made, sizeof made, "%s", usual_unit);
+    if (*made && !unit_valid(made))
+        return err_set(err, ERR_USAGE, "no such unit; UCUM: mg, ug/kg/min, mm[Hg], L/min, %%");
+    *value = read;
+    memcpy(unit, made, UNIT_TEXT_SIZE);
+    return ERR_OK;
+}
+
+bool value_plausible(const struct code *code, double value, const char *unit, char *why,
+                     size_t size)
+{
+    double factor = 1;
+    if (!code || !code_takes_value(code))
+        return true;
+    if (strcmp(unit, code->unit) != 0 && !unit_factor(unit, code->unit, &factor)) {
+        (void)snprintf(why, size, "%s is usually in %s", code->label, code->unit);
+        return false;
+    }
+    double here = value * factor;
+    if (here >= code->least && here <= code->most)
+        return true;
+    if (here > code->most)
+        (void)snprintf(why, size, "%g %s? usually %g at most", here, code->unit, code->most);
+    else
+        (void)snprintf(why, size, "%g %s? usually %g at least", here, code->unit, code->least);
+    return false;
 }

@@ -26,6 +26,16 @@ const struct code *code_by_text(const struct codebook *codebook, const char *tex
  * may be NULL: a code that is not in the codebook asks for nothing. */
 enum mark_state mark_state_of(const struct code *code, const struct mark *mark);
 
+/* "100 mg", "0,1 ug/kg/min", "100": a number, then perhaps a unit, else `usual_unit`. */
+enum { UNIT_TEXT_SIZE = 64 };
+MUST_CHECK int value_entry(const char *text, const char *usual_unit, double *value,
+                           char unit[UNIT_TEXT_SIZE], struct err *err);
+
+/* Is a value within what the codebook calls plausible? Else `why` says in what way not: a unit that
+ * cannot be that of the code, or a value outside its limits (mg for ug). */
+bool value_plausible(const struct code *code, double value, const char *unit, char *why,
+                     size_t size);
+
 /* Dose, rate and setting. */
 bool code_takes_value(const struct code *code);
 

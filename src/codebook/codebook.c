@@ -3,6 +3,7 @@
  */
 #include "codebook/codebook.h"
 
+#include <math.h>
 #include <stdlib.h>
 #include <string.h>
 
@@ -15,9 +16,24 @@ static const char *const kind_names[] = {"point",   "span", "dose", "rate",
                                          "setting", "note", "sync"};
 enum { KIND_COUNT = 7, UNIT_SIZE = 64, SHOWN_MOST = 64 };
 
-static const char *const column_names[] = {"code",  "label",      "key",      "kind", "unit",
-                                           "class", "pairs-with", "required", "help"};
-enum column { CODE, LABEL, KEY, KIND, UNIT, CLASS, PAIRS, REQUIRED, HELP, COLUMN_COUNT };
+static const char *const column_names[] = {"code",  "label", "key",        "kind",
+                                           "unit",  "class", "pairs-with", "required",
+                                           "timer", "least", "most",       "help"};
+enum column {
+    CODE,
+    LABEL,
+    KEY,
+    KIND,
+    UNIT,
+    CLASS,
+    PAIRS,
+    REQUIRED,
+    TIMER,
+    LEAST,
+    MOST,
+    HELP,
+    COLUMN_COUNT
+};
 
 struct codebook {
     struct arena arena;
@@ -141,13 +157,33 @@ static int take_unit(struct reading *reading, struct code *out, struct err *err)
     return out->unit ? ERR_OK : err_memory(err, "a codebook");
 }
 
-static int take_required(struct reading *reading, struct code *out, struct err *err)
+static int take_yes(struct reading *reading, enum column column, bool *out, struct err *err)
 {
-    const char *text = field(reading, REQUIRED);
-    out->required = ascii_equal(text, "yes");
-    if (out->required || !*text || ascii_equal(text, "no"))
+    const char *text = field(reading, column);
+    *out = ascii_equal(text, "yes");
+    if (*out || !*text || ascii_equal(text, "no"))
         return ERR_OK;
-    return refuse(reading, REQUIRED, err, "is neither yes nor no", text);
+    return refuse(reading, column, err, "is neither yes nor no", text);
+}
+
+static int take_limit(struct reading *reading, enum column column, double missing, double *out,
+                      struct err *err)
+{
+    const char *text = field(reading, column);
+    *out = missing;
+    if (!*text || number_parse_comma(text, out))
+        return ERR_OK;
+    return refuse(reading, column, err, "is not a number", text);
+}
+
+static int take_limits(struct reading *reading, struct code *out, struct err *err)
+{
+    int failed = take_limit(reading, LEAST, -HUGE_VAL, &out->least, err);
+    if (!failed)
+        failed = take_limit(reading, MOST, HUGE_VAL, &out->most, err);
+    if (!failed && out->least > out->most)
+        failed = refuse(reading, MOST, err, "is below the least value", field(reading, MOST));
+    return failed;
 }
 
 /* More fields than columns: a comma stands unquoted somewhere, and what follows it is lost. */
@@ -179,7 +215,11 @@ static int take_row(struct reading *reading, struct err *err)
     if (!failed)
         failed = take_unit(reading, out, err);
     if (!failed)
-        failed = take_required(reading, out, err);
+        failed = take_yes(reading, REQUIRED, &out->required, err);
+    if (!failed)
+        failed = take_yes(reading, TIMER, &out->timer, err);
+    if (!failed)
+        failed = take_limits(reading, out, err);
     if (!failed)
         failed = copy_text(reading, CLASS, &out->class_name, err);
     if (!failed)

@@ -10,6 +10,8 @@
  *   class       group on the screen; drug classes carry their ISO 26825 colour
  *   pairs-with  code that must follow (on/off written as two codes); must exist
  *   required    yes or empty: `check` misses it in a case
+ *   timer       yes or empty: the live screen shows how long ago it was
+ *   least, most numbers in the code's unit, or empty: a value outside is asked about once
  *   help        one sentence
  * A bad codebook is refused with the line and the column's name. Nothing here touches the disk.
  */
@@ -39,8 +41,9 @@ struct code {
     const char *unit;       /* "" when none */
     const char *class_name; /* "" when none */
     const char *pairs_with; /* "" when none */
-    bool required;
-    const char *help; /* "" when none */
+    bool required, timer;
+    double least, most; /* plausible values in `unit`; -INFINITY and INFINITY when not given */
+    const char *help;   /* "" when none */
 };
 
 struct codebook;

@@ -8,30 +8,9 @@
 
 #include "terminal/review_impl.h"
 
-enum {
-    NARROW = 14,
-    DOT_ROWS_PER_CELL = 4,
-    MARK_LINE = 0x250a,
-    SECOND_LINE = 0x2506,
-    CURSOR_LINE = 0x2502
-};
+enum { NARROW = 14, MARK_LINE = 0x250a, SECOND_LINE = 0x2506, CURSOR_LINE = 0x2502 };
 
 /* ---- the gutter ---- */
-
-/* A number as precise as a range of `span` deserves: "1.2" in 2 mV, "118" in 200 mm[Hg]. */
-static void number_text(double value, double span, int more, char out[VALUE_TEXT_SIZE])
-{
-    int digits = span > 0 ? 1 - (int)floor(log10(span)) + more : 2;
-    digits = digits < 0 ? 0 : digits > 6 ? 6 : digits;
-    if (fabs(value) < 0.5 * pow(10, -digits))
-        value = 0; /* never "-0.00" */
-    if (isnan(value))
-        (void)snprintf(out, VALUE_TEXT_SIZE, "--");
-    else if (fabs(value) >= 1e7)
-        (void)snprintf(out, VALUE_TEXT_SIZE, "%.2e", value);
-    else
-        (void)snprintf(out, VALUE_TEXT_SIZE, "%.*f", digits, value);
-}
 
 static int put_right(struct canvas *canvas, int row, int end, enum ink ink, const char *text)
 {
@@ -66,17 +45,6 @@ static void age_text(int64_t age_ns, char out[VALUE_TEXT_SIZE])
         (void)snprintf(out, VALUE_TEXT_SIZE, "%lld min old", (long long)(seconds / 60));
 }
 
-/* A unit as people read it: UCUM's brackets left out. */
-static void shown_unit(const char *unit, char out[VALUE_TEXT_SIZE])
-{
-    size_t at = 0;
-    for (; *unit && at + 1 < VALUE_TEXT_SIZE; unit++) {
-        if (*unit != '[' && *unit != ']')
-            out[at++] = *unit;
-    }
-    out[at] = '\0';
-}
-
 /* Where a lane's gutter is, and what its scale runs from and to. */
 struct gutter {
     int row, rows, end; /* end: first column that is not the gutter's text */
@@ -93,12 +61,12 @@ static void draw_value(const struct review *review, struct canvas *canvas, const
     bool tall = gutter->rows >= 3, second = review->second_ns != NS_NONE;
     int row = gutter->row + 1, end = gutter->rows == 2 ? gutter->low_limit : gutter->end;
     char text[VALUE_TEXT_SIZE], unit[VALUE_TEXT_SIZE];
-    number_text((double)reading.value, span, 1, text);
+    range_number((double)reading.value, span, 1, text);
     if (gutter->rows == 1) {
         (void)put_right(canvas, gutter->row, gutter->end, INK_STRONG, text);
         return;
     }
-    shown_unit(lane->trace->unit, unit);
+    unit_shown(lane->trace->unit, unit);
     int at = canvas_text(canvas, row, 2, end, INK_STRONG, text);
     /* Where all goes into one row, a difference needs the unit's place. */
     if (tall || !second)
@@ -106,7 +74,7 @@ static void draw_value(const struct review *review, struct canvas *canvas, const
     int next_row = tall ? row + 1 : row, next = tall ? 2 : at + 1;
     int next_end = gutter->rows <= 3 ? gutter->low_limit : gutter->end;
     if (second) {
-        number_text((double)(reading.value - reading.second), span, 1, text);
+        range_number((double)(reading.value - reading.second), span, 1, text);
         (void)canvas_printf(canvas, next_row, next, next_end, INK_CURSOR_2, "\u0394%s", text);
     } else if (lane->trace->times_ns && !isnan(reading.value)) {
         age_text(reading.age_ns, text);
@@ -154,7 +122,7 @@ static void draw_gutter(const struct review *review, struct canvas *canvas, cons
 {
     struct gutter gutter = {row, rows, review->layout.gutter - 1, low, high, 0};
     bool focused = lane == &review->lanes[review->focus];
-    char text[VALUE_TEXT_SIZE + 1] = "=";
+    char text[NUMBER_TEXT_SIZE + 1] = "=";
     if (gutter.end < 4)
         return;
     int limit = gutter.end / 2;
@@ -163,9 +131,9 @@ static void draw_gutter(const struct review *review, struct canvas *canvas, cons
         limit = gutter.low_limit = gutter.end;
     } else if (rows >= 2) {
         /* '=' where the gain is set by hand. */
-        number_text(high, high - low, 0, text + 1);
+        range_number(high, high - low, 0, text + 1);
         limit = put_right(canvas, row, gutter.end, INK_DIM, lane->fixed ? text : text + 1) - 1;
-        number_text(low, high - low, 0, text);
+        range_number(low, high - low, 0, text);
         gutter.low_limit = put_right(canvas, row + rows - 1, gutter.end, INK_DIM, text) - 1;
     }
     if (focused)
@@ -173,60 +141,6 @@ static void draw_gutter(const struct review *review, struct canvas *canvas, cons
     (void)canvas_text(canvas, row, 1, limit, focused ? INK_STRONG : INK_TEXT, lane->trace->name);
     draw_value(review, canvas, lane, &gutter);
     draw_remark(review, canvas, lane, &gutter);
-}
-
-/* ---- the curve ---- */
-
-/* Braille dots of a cell by row from the top, left and right (Unicode 8-dot patterns). */
-static const uint8_t dot_bits[DOTS_PER_CELL][DOT_ROWS_PER_CELL] = {{0x01, 0x02, 0x04, 0x40},
-                                                                   {0x08, 0x10, 0x20, 0x80}};
-
-struct scale {
-    double high, dots_per_unit;
-    int dot_rows;
-};
-
-static int dot_row(const struct scale *scale, float value)
-{
-    double row = floor((scale->high - (double)value) * scale->dots_per_unit);
-    return row < 0 ? 0 : row >= scale->dot_rows ? scale->dot_rows - 1 : (int)row;
-}
-
-/* One column of cells: the bits of both its columns of dots. */
-static void draw_cell_column(struct canvas *canvas, const struct column *columns,
-                             const struct scale *scale, int row, int column, enum ink ink)
-{
-    for (int side = 0; side < DOTS_PER_CELL; side++) {
-        if (columns[side].kind != COLUMN_DATA)
-            continue;
-        int top = dot_row(scale, columns[side].high), bottom = dot_row(scale, columns[side].low);
-        for (int dot = top; dot <= bottom; dot++) {
-            int at = row + dot / DOT_ROWS_PER_CELL;
-            struct cell *cell = &canvas->cells[at * canvas->columns + column];
-            uint32_t before = cell->glyph ? cell->glyph : 0x2800;
-            cell->glyph = before | dot_bits[side][dot % DOT_ROWS_PER_CELL];
-            cell->ink = (uint8_t)ink;
-        }
-    }
-}
-
-static void draw_curve(const struct review *review, struct canvas *canvas, const struct lane *lane,
-                       int row, int rows, double low, double high, enum ink ink)
-{
-    int left = review->layout.gutter;
-    struct scale scale = {high, rows * DOT_ROWS_PER_CELL / (high - low), rows * DOT_ROWS_PER_CELL};
-    bool any = false;
-    for (int cell = 0; cell < review->view.cells; cell++) {
-        const struct column *columns = &lane->columns[cell * DOTS_PER_CELL];
-        if (columns[0].kind == COLUMN_PENDING || columns[1].kind == COLUMN_PENDING)
-            canvas_put(canvas, row + rows / 2, left + cell, 0x2591, INK_DIM);
-        else
-            draw_cell_column(canvas, columns, &scale, row, left + cell, ink);
-        any = any || columns[0].kind != COLUMN_NOTHING || columns[1].kind != COLUMN_NOTHING;
-    }
-    int end = left + review->view.cells;
-    if (!any)
-        (void)canvas_text(canvas, row + rows / 2, left + 2, end, INK_DIM, "nothing recorded here");
 }
 
 /* ---- lines over all traces ---- */
@@ -277,7 +191,14 @@ static void draw_lane(struct review *review, struct canvas *canvas, size_t nth, 
     lane_refresh(review, lane);
     review->waits = review->waits || lane->answer.pending;
     lane_range(lane, &low, &high);
-    draw_curve(review, canvas, lane, row, rows, low, high, inks[index % 4]);
+    struct curve curve = {.row = row,
+                          .column = review->layout.gutter,
+                          .rows = rows,
+                          .cells = review->view.cells,
+                          .low = low,
+                          .high = high,
+                          .ink = inks[index % 4]};
+    curve_draw(canvas, &curve, lane->columns);
     draw_gutter(review, canvas, lane, row, rows, low, high);
 }
 

@@ -6,38 +6,7 @@
  */
 #include <string.h>
 
-#include "codebook/drug_class.h"
 #include "terminal/review_impl.h"
-
-enum ink mark_ink(const struct code *code, const struct mark *mark)
-{
-    if (mark->state == MARK_REJECTED)
-        return INK_DIM;
-    for (size_t i = 0; code && *code->class_name && drug_class_at(i); i++) {
-        if (strcmp(drug_class_at(i)->name, code->class_name) == 0 && INK_CLASS_0 + i < INK_COUNT)
-            return (enum ink)(INK_CLASS_0 + i);
-    }
-    return mark->state == MARK_INCOMPLETE ? INK_WARN : INK_MARK;
-}
-
-uint32_t mark_state_glyph(const struct mark *mark)
-{
-    switch (mark->state) {
-    case MARK_INCOMPLETE:
-        return '?';
-    case MARK_CONFIRMED:
-        return 0x2713;
-    case MARK_REJECTED:
-        return 0x00d7;
-    default:
-        return ' ';
-    }
-}
-
-uint32_t mark_glyph(const struct code *code)
-{
-    return code ? code->key : '#';
-}
 
 /* A row of the rail in which cells [from, to] are free; -1 when there is none. */
 static int free_row(const struct canvas *canvas, const struct part *part, int from, int to)

@@ -311,19 +311,6 @@ const char *mark_label(const struct review *review, size_t index)
     return review->codes[index] ? review->codes[index]->label : review->marks[index].code;
 }
 
-void mark_value_text(const struct mark *mark, char out[VALUE_TEXT_SIZE])
-{
-    out[0] = '\0';
-    if (!mark->has_value)
-        return;
-    struct str text = {0};
-    str_put_double(&text, mark->value);
-    bool bare = !*mark->unit || strcmp(mark->unit, "1") == 0;
-    (void)snprintf(out, VALUE_TEXT_SIZE, "%s%s%s", str_text(&text), bare ? "" : " ",
-                   bare ? "" : mark->unit);
-    str_free(&text);
-}
-
 void review_clock_text(const struct review *review, int64_t at_ns, int decimals,
                        char out[TIME_TEXT_SIZE])
 {

@@ -5,7 +5,6 @@
 #include <stdio.h>
 #include <string.h>
 
-#include "codebook/unit.h"
 #include "terminal/review_impl.h"
 
 /* The value last entered for the same code, by order of entry. */
@@ -85,33 +84,14 @@ static void refuse(struct review *review, const char *why)
     (void)snprintf(review->prompt.problem, sizeof review->prompt.problem, "%.199s", why);
 }
 
-/* "100 mg", "0,1 ug/kg/min", "100": number, then perhaps a unit; else the code's. false after
- * saying what is wrong. `unit` keeps the text that mark->unit then points to. */
+/* false after saying what is wrong. `unit` keeps the text that mark->unit then points to. */
 static bool read_value(struct review *review, const struct code *code, struct mark *mark,
-                       char *unit, size_t size)
+                       char unit[UNIT_TEXT_SIZE])
 {
-    char number[PROMPT_SIZE];
-    const char *text = review->prompt.text;
-    text += strspn(text, " ");
-    size_t length = strspn(text, "+-.,0123456789");
-    memcpy(number, text, length);
-    number[length] = '\0';
-    if (!number_parse_comma(number, &mark->value)) {
-        refuse(review, "a number, then perhaps a unit: 100 mg");
-        return false;
-    }
-    text += length;
-    text += strspn(text, " ");
-    char typed[PROMPT_SIZE];
-    (void)snprintf(typed, sizeof typed, "%s", text);
-    for (size_t end = strlen(typed); end > 0 && typed[end - 1] == ' '; end--)
-        typed[end - 1] = '\0';
-    if (*typed)
-        unit_normalise(typed, unit, size);
-    else
-        (void)snprintf(unit, size, "%s", code ? code->unit : mark->unit);
-    if (*unit && !unit_valid(unit)) {
-        refuse(review, "no such unit; UCUM: mg, ug/kg/min, mm[Hg], L/min, %");
+    struct err err = {0};
+    if (value_entry(review->prompt.text, code ? code->unit : mark->unit, &mark->value, unit,
+                    &err)) {
+        refuse(review, err.text);
         return false;
     }
     mark->has_value = true;
@@ -130,7 +110,7 @@ static bool read_time(struct review *review, int64_t *out)
 
 /* Puts what was typed into the mark; false after saying what is wrong. */
 static bool read_entry(struct review *review, const struct code *code, struct mark *mark,
-                       char *unit, size_t size)
+                       char unit[UNIT_TEXT_SIZE])
 {
     int64_t length = mark->until_ns == NS_NONE ? 0 : mark->until_ns - mark->onset_ns;
     switch (review->asking) {
@@ -154,7 +134,7 @@ static bool read_entry(struct review *review, const struct code *code, struct ma
         }
         return true;
     case ASK_VALUE:
-        return read_value(review, code, mark, unit, size);
+        return read_value(review, code, mark, unit);
     default:
         mark->note = review->prompt.text;
         return true;
@@ -174,8 +154,8 @@ static void go_to_entry(struct review *review)
 static void save_entry(struct review *review, size_t index)
 {
     struct mark mark = review->marks[index];
-    char unit[VALUE_TEXT_SIZE];
-    if (!read_entry(review, review->codes[index], &mark, unit, sizeof unit))
+    char unit[UNIT_TEXT_SIZE];
+    if (!read_entry(review, review->codes[index], &mark, unit))
         return;
     mark.state = mark_state_of(review->codes[index], &mark);
     struct err err = {0};

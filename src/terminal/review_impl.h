@@ -6,7 +6,9 @@
 
 #include "case/mark_entry.h"
 #include "terminal/columns.h"
+#include "terminal/curve.h"
 #include "terminal/display_filter.h"
+#include "terminal/mark_look.h"
 #include "terminal/prompt.h"
 #include "terminal/review.h"
 
@@ -102,9 +104,6 @@ void review_overviews(const struct review *review, int64_t *done, int64_t *total
 /* Index of the chosen mark; mark_count when there is none. */
 size_t review_chosen_index(const struct review *review);
 const char *mark_label(const struct review *review, size_t index);
-/* "50 mg", "" when it has no value. */
-enum { VALUE_TEXT_SIZE = 80 };
-void mark_value_text(const struct mark *mark, char out[VALUE_TEXT_SIZE]);
 /* Time of day, or from the start when the case does not know its wall clock. */
 void review_clock_text(const struct review *review, int64_t at_ns, int decimals,
                        char out[TIME_TEXT_SIZE]);
@@ -162,10 +161,5 @@ void draw_list(const struct review *review, struct canvas *canvas);
 void draw_lines(const struct review *review,
                 struct canvas *canvas); /* title, readout, mark, hint */
 void draw_help(const struct review *review, struct canvas *canvas);
-enum ink mark_ink(const struct code *code, const struct mark *mark);
-/* ' ' marked, '?' incomplete, check confirmed, cross rejected. */
-uint32_t mark_state_glyph(const struct mark *mark);
-/* Code point that stands for the mark: its key, or '#'. */
-uint32_t mark_glyph(const struct code *code);
 
 #endif

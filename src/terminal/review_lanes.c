@@ -32,36 +32,10 @@ void lane_refresh(struct review *review, struct lane *lane)
     lane->drawn_filter = lane->filter;
 }
 
-/* 1, 2 or 5 times a power of ten: the smallest that is not below `least`. */
-static double round_step(double least)
-{
-    double power = pow(10, floor(log10(least)));
-    double part = least / power;
-    return power * (part <= 1.0000001 ? 1 : part <= 2.0000001 ? 2 : part <= 5.0000001 ? 5 : 10);
-}
-
-/* The robust range, widened to round numbers so that the scale is readable and stands still while
- * the trace scrolls by. */
-static void automatic_range(const struct lane *lane, double *low, double *high)
-{
-    double from = lane->ranged ? lane->low : 0, to = lane->ranged ? lane->high : 0;
-    double span = to - from;
-    double least = fmax(fabs(from), fabs(to)) * 1e-6;
-    if (!(span > least)) {
-        double half = least > 0 ? fmax(fabs(from) * 0.01, least) : 1;
-        *low = from - half;
-        *high = from + half;
-        return;
-    }
-    double step = round_step(span / 8);
-    *low = floor((from - 0.05 * span) / step) * step;
-    *high = ceil((to + 0.05 * span) / step) * step;
-}
-
 void lane_range(const struct lane *lane, double *low, double *high)
 {
     if (!lane->fixed) {
-        automatic_range(lane, low, high);
+        range_round(lane->ranged, lane->low, lane->high, low, high);
         return;
     }
     *low = lane->centre - lane->per_division * LANE_DIVISIONS / 2;
