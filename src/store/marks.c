@@ -142,6 +142,27 @@ int store_marks(struct store *store, const struct mark **out, size_t *count, str
     return ERR_OK;
 }
 
+int marks_copy(const struct mark *marks, size_t count, struct arena *arena, struct mark **out,
+               struct err *err)
+{
+    struct mark *copy = arena_alloc(arena, count + 1, sizeof *copy);
+    if (!copy)
+        return err_memory(err, "marks");
+    for (size_t i = 0; i < count; i++) {
+        struct mark *to = &copy[i];
+        *to = marks[i];
+        const char **texts[] = {&to->code, &to->unit,  &to->route,
+                                &to->note, &to->rater, &to->stamp_clock};
+        for (size_t k = 0; k < sizeof texts / sizeof *texts; k++) {
+            *texts[k] = arena_string(arena, *texts[k] ? *texts[k] : "");
+            if (!*texts[k])
+                return err_memory(err, "marks");
+        }
+    }
+    *out = copy;
+    return ERR_OK;
+}
+
 /* Binds the member `key` of `fields` as `:key`, when the statement has such a parameter. */
 static void bind_json(sqlite3_stmt *statement, const char *key, const json_t *value)
 {
@@ -220,9 +241,8 @@ static int check_mark(const struct mark *mark, struct err *err)
     return ERR_OK;
 }
 
-/* One mark, inside the caller's transaction and step. */
-static int add_one(struct store *store, const struct mark *mark, int64_t step, const char *why,
-                   int64_t *id, struct err *err)
+int mark_add_inside(struct store *store, const struct mark *mark, int64_t step, const char *why,
+                    int64_t *id, struct err *err)
 {
     struct mark full = *mark;
     if (!full.rater || !*full.rater)
@@ -260,7 +280,7 @@ int store_mark_add(struct store *store, const struct mark *mark, const char *why
         return failed;
     failed = history_new_step(store, &step, err);
     if (!failed)
-        failed = add_one(store, mark, step, why, &made, err);
+        failed = mark_add_inside(store, mark, step, why, &made, err);
     failed = sql_end(store, failed, err);
     marks_forget(store);
     if (!failed)
@@ -277,15 +297,14 @@ int store_mark_add_all(struct store *store, const struct mark *marks, size_t cou
         return failed;
     failed = history_new_step(store, &step, err);
     for (size_t i = 0; i < count && !failed; i++)
-        failed = add_one(store, &marks[i], step, why, &id, err);
+        failed = mark_add_inside(store, &marks[i], step, why, &id, err);
     failed = sql_end(store, failed, err);
     marks_forget(store);
     return failed;
 }
 
-/* Writes what differs between the stored mark and `mark`, with its row; nothing when equal. */
-static int change_one(struct store *store, const struct mark *mark, const char *why,
-                      struct err *err)
+int mark_change_inside(struct store *store, const struct mark *mark, const char *why,
+                       struct err *err)
 {
     struct arena arena = {0};
     struct mark old, new = *mark;
@@ -328,7 +347,7 @@ int store_mark_change(struct store *store, const struct mark *mark, const char *
     int failed = sql_begin(store, err);
     if (failed)
         return failed;
-    failed = sql_end(store, change_one(store, mark, why, err), err);
+    failed = sql_end(store, mark_change_inside(store, mark, why, err), err);
     marks_forget(store);
     return failed;
 }

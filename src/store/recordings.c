@@ -106,8 +106,8 @@ static int log_json(struct store *store, const char *action, int64_t id, json_t 
 }
 
 /* Inside the caller's transaction, so that no other connection attaches it in between. */
-static int add(struct store *store, const struct stored_recording *recording, int64_t *id,
-               struct err *err)
+int recording_add_inside(struct store *store, const struct stored_recording *recording, int64_t *id,
+                         struct err *err)
 {
     const struct stored_recording *known;
     size_t count;
@@ -141,7 +141,7 @@ int store_recording_add(struct store *store, const struct stored_recording *reco
         failed = sql_begin(store, err);
     if (failed)
         return failed;
-    failed = sql_end(store, add(store, recording, &made, err), err);
+    failed = sql_end(store, recording_add_inside(store, recording, &made, err), err);
     forget(store);
     if (!failed)
         *id = made;

@@ -161,6 +161,7 @@ static int check_kind(struct store *store, enum store_mode mode, struct err *err
                        "%s: a database, but not a case; make one with `incisura start`",
                        store->path);
     store->newer = version > migration_count;
+    store->version = version;
     if (store->newer && mode == STORE_WRITE)
         return err_set(err, ERR_NEWER,
                        "%s: made by a newer program (version %lld, this one knows %d): it can be "
@@ -184,7 +185,10 @@ static int migrate(struct store *store, struct err *err)
         if (!failed)
             failed = sql_run(store, set, err);
     }
-    return sql_end(store, failed, err);
+    failed = sql_end(store, failed, err);
+    if (!failed)
+        store->version = migration_count;
+    return failed;
 }
 
 int header_read(struct store *store, struct arena *arena, struct case_header *out, struct err *err)
@@ -223,7 +227,7 @@ int header_read(struct store *store, struct arena *arena, struct case_header *ou
 }
 
 /* The header kept is the old one until the new one is read whole. */
-static int load_header(struct store *store, struct err *err)
+int header_reload(struct store *store, struct err *err)
 {
     struct arena arena = {0};
     struct case_header header;
@@ -272,7 +276,7 @@ int store_open(const char *path, enum store_mode mode, const char *rater, struct
     if (!failed && mode == STORE_WRITE)
         failed = migrate(made, err);
     if (!failed)
-        failed = load_header(made, err);
+        failed = header_reload(made, err);
     if (!failed)
         failed = set_rater(made, rater, err);
     if (failed) {
@@ -399,7 +403,7 @@ static int epoch_fixed(struct store *store, struct err *err)
                    store->path);
 }
 
-static int update_epoch(struct store *store, int64_t epoch_civil_ns, struct err *err)
+int epoch_fix_inside(struct store *store, int64_t epoch_civil_ns, struct err *err)
 {
     sqlite3_stmt *statement;
     int failed = sql_prepare(
@@ -426,8 +430,8 @@ int store_epoch_fix(struct store *store, int64_t epoch_civil_ns, struct err *err
         return epoch_fixed(store, err);
     int failed = sql_begin(store, err);
     if (!failed)
-        failed = sql_end(store, update_epoch(store, epoch_civil_ns, err), err);
-    return failed ? failed : load_header(store, err);
+        failed = sql_end(store, epoch_fix_inside(store, epoch_civil_ns, err), err);
+    return failed ? failed : header_reload(store, err);
 }
 
 bool store_refresh(struct store *store)

@@ -20,6 +20,7 @@
 #include <stddef.h>
 #include <stdint.h>
 
+#include "base/arena.h"
 #include "base/err.h"
 #include "base/file.h"
 #include "base/ns.h"
@@ -129,6 +130,9 @@ MUST_CHECK int store_mark_change(struct store *store, const struct mark *mark, c
  * store; store_refresh() tells of others') or store_close(). */
 MUST_CHECK int store_marks(struct store *store, const struct mark **out, size_t *count,
                            struct err *err);
+/* Copies of marks, texts and all, in `arena`. */
+MUST_CHECK int marks_copy(const struct mark *marks, size_t count, struct arena *arena,
+                          struct mark **out, struct err *err);
 /* True when another connection changed the file since the last call. */
 bool store_refresh(struct store *store);
 

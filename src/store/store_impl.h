@@ -8,6 +8,7 @@
 #include <sqlite3.h>
 
 #include "base/arena.h"
+#include "store/live.h"
 #include "store/store.h"
 
 enum { APPLICATION_ID = 0x494E4349 }; /* "INCI" */
@@ -16,6 +17,7 @@ struct store {
     sqlite3 *db;
     char *path, *rater;
     bool writable, newer;
+    int64_t version; /* of the file's schema; an older one is only ever read */
     int64_t data_version;
     struct arena header_arena;
     struct case_header header;
@@ -87,11 +89,21 @@ void marks_forget(struct store *store);
 /* Reads one mark into *out, its texts into `arena`. ERR_NOT_FOUND when there is none. */
 MUST_CHECK int mark_load(struct store *store, int64_t id, struct arena *arena, struct mark *out,
                          struct err *err);
+/* Inside the caller's transaction: one mark more, in a step; what differs between the stored mark
+ * and `mark`, with its row, nothing when they are equal. */
+MUST_CHECK int mark_add_inside(struct store *store, const struct mark *mark, int64_t step,
+                               const char *why, int64_t *id, struct err *err);
+MUST_CHECK int mark_change_inside(struct store *store, const struct mark *mark, const char *why,
+                                  struct err *err);
 /* Writes the fields of `fields` (as in mark_to_json) into the row of mark `id`. */
 MUST_CHECK int mark_write(struct store *store, int64_t id, const json_t *fields, struct err *err);
 
 /* ---- store.c ---- */
 
+/* Fixes the epoch inside the caller's transaction. */
+MUST_CHECK int epoch_fix_inside(struct store *store, int64_t epoch_civil_ns, struct err *err);
+/* Takes the header in again. */
+MUST_CHECK int header_reload(struct store *store, struct err *err);
 /* The header as it is in the file now, its texts in `arena`. */
 MUST_CHECK int header_read(struct store *store, struct arena *arena, struct case_header *out,
                            struct err *err);
@@ -100,5 +112,28 @@ json_t *header_to_json(const struct case_header *header);
 /* ---- recordings.c ---- */
 
 json_t *recording_to_json(const struct stored_recording *recording);
+/* One recording more, inside the caller's transaction. */
+MUST_CHECK int recording_add_inside(struct store *store, const struct stored_recording *recording,
+                                    int64_t *id, struct err *err);
+
+/* ---- sessions.c ---- */
+
+/* New reference, NULL when out of memory. */
+json_t *session_to_json(const struct live_session *session);
+MUST_CHECK int session_begin_inside(struct store *store, const struct live_session *session,
+                                    bool take_over, struct err *err);
+/* Calls `each` for every session in order of beginning. */
+MUST_CHECK int sessions_each(struct store *store,
+                             int (*each)(int64_t id, const struct live_session *session,
+                                         void *context, struct err *err),
+                             void *context, struct err *err);
+
+/* ---- streams.c ---- */
+
+/* Recordings' clocks as JSON, for comparing with the history; new reference. */
+MUST_CHECK int clocks_each(struct store *store,
+                           int (*each)(int64_t recording, const char *clock, void *context,
+                                       struct err *err),
+                           void *context, struct err *err);
 
 #endif

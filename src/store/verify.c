@@ -11,7 +11,7 @@
 /* State by replay: JSON objects by id. */
 struct replay {
     struct store *store;
-    json_t *header, *marks, *recordings;
+    json_t *header, *marks, *recordings, *sessions, *clocks;
     bool failed;
 };
 
@@ -34,6 +34,10 @@ static int replay_row(const struct history_row *row, void *context)
         into = slot(replay->marks, row->object);
     else if (strcmp(row->action, "attach") == 0 || strcmp(row->action, "found") == 0)
         into = slot(replay->recordings, row->object);
+    else if (strncmp(row->action, "session-", 8) == 0)
+        into = slot(replay->sessions, row->object);
+    else if (strcmp(row->action, "clock") == 0)
+        into = slot(replay->clocks, row->object);
     else if (strcmp(row->action, "create") == 0 || strcmp(row->action, "epoch") == 0)
         into = replay->header;
     else
@@ -108,6 +112,30 @@ static int compare_header(struct store *store, struct replay *replay, struct err
     return failed;
 }
 
+static int compare_session(int64_t id, const struct live_session *session, void *context,
+                           struct err *err)
+{
+    struct replay *replay = context;
+    return compare(replay->store, "session", id, replay->sessions, session_to_json(session), err);
+}
+
+static int compare_clock(int64_t recording, const char *clock, void *context, struct err *err)
+{
+    struct replay *replay = context;
+    json_t *is = json_pack("{s:s}", "clock", clock ? clock : "");
+    return compare(replay->store, "clock of recording", recording, replay->clocks, is, err);
+}
+
+static int compare_live(struct store *store, struct replay *replay, struct err *err)
+{
+    int failed = sessions_each(store, compare_session, replay, err);
+    if (!failed)
+        failed = clocks_each(store, compare_clock, replay, err);
+    if (!failed)
+        failed = none_left(store, "session", replay->sessions, err);
+    return failed ? failed : none_left(store, "clock of recording", replay->clocks, err);
+}
+
 static int compare_all(struct store *store, struct replay *replay, struct err *err)
 {
     const struct mark *marks;
@@ -127,6 +155,8 @@ static int compare_all(struct store *store, struct replay *replay, struct err *e
         failed = none_left(store, "mark", replay->marks, err);
     if (!failed)
         failed = none_left(store, "recording", replay->recordings, err);
+    if (!failed)
+        failed = compare_live(store, replay, err);
     return failed ? failed : compare_header(store, replay, err);
 }
 
@@ -163,11 +193,13 @@ static int verify(struct store *store, int64_t *rows, int64_t *bad_seq, char hea
                   struct err *err)
 {
     uint8_t digest[DIGEST_SIZE];
-    struct replay replay = {store, json_object(), json_object(), json_object(), false};
+    struct replay replay = {store,         json_object(), json_object(), json_object(),
+                            json_object(), json_object(), false};
     *bad_seq = 0;
-    int failed = replay.header && replay.marks && replay.recordings
-                     ? history_check(store, rows, bad_seq, digest, err)
-                     : err_memory(err, "verifying");
+    int failed =
+        replay.header && replay.marks && replay.recordings && replay.sessions && replay.clocks
+            ? history_check(store, rows, bad_seq, digest, err)
+            : err_memory(err, "verifying");
     if (!failed)
         failed = store_history(store, replay_row, &replay, err);
     if (!failed && replay.failed)
@@ -181,6 +213,8 @@ static int verify(struct store *store, int64_t *rows, int64_t *bad_seq, char hea
     json_decref(replay.header);
     json_decref(replay.marks);
     json_decref(replay.recordings);
+    json_decref(replay.sessions);
+    json_decref(replay.clocks);
     return failed;
 }
 

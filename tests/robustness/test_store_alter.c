@@ -10,7 +10,7 @@
 #include <string.h>
 #include <unistd.h>
 
-#include "store/store.h"
+#include "store/live.h"
 
 static char folder[] = "/tmp/incisura-alter-XXXXXX";
 static char path[64], copy[64];
@@ -46,6 +46,18 @@ static void set_up(void)
     struct stored_recording recording = {
         .path = "/a", .digest = "d", .options = "", .start_civil_ns = NS_NONE};
     cr_assert_eq(store_recording_add(store, &recording, &id, &err), 0);
+    struct live_session session = {.uid = "u",
+                                   .host = "elsewhere",
+                                   .boot_id = "b",
+                                   .rater = "KM",
+                                   .epoch_civil_ns = 5,
+                                   .ended_utc_ns = NS_NONE};
+    cr_assert_eq(store_session_begin(store, &session, false, &err), 0, "%s", err.text);
+    const struct stored_stream stream = {"/s.bdf", "u", "fifo:x", "[[0,1,2,1,0]]"};
+    recording.path = "/s.bdf";
+    (void)strcpy(recording.digest, "e");
+    cr_assert_eq(store_stream_keep(store, &stream, &err), 0, "%s", err.text);
+    cr_assert_eq(store_stream_attach(store, &stream, &recording, &id, &err), 0, "%s", err.text);
     store_close(store);
 }
 
@@ -122,7 +134,7 @@ Test(store_alter, every_alteration_is_named)
         {"UPDATE history SET seq = -1 WHERE seq = 2; UPDATE history SET seq = 2 WHERE seq = 3; "
          "UPDATE history SET seq = 3 WHERE seq = -1",
          "history row 2", 2},
-        {"DELETE FROM history WHERE seq = 5", "recording 1 is not in the history", 0},
+        {"DELETE FROM history WHERE seq >= 7", "recording 2 is not in the history", 0},
         {"UPDATE marks SET onset_ns = 77 WHERE id = 2",
          "mark 2: onset_ns is 77, the history says 1", 0},
         {"UPDATE marks SET note = 'other' WHERE id = 3", "mark 3: note", 0},
@@ -132,6 +144,16 @@ Test(store_alter, every_alteration_is_named)
          "source, rater, error_ns, stamp_clock, stamp_ns, stamp_utc_ns FROM marks WHERE id = 1",
          "mark 9 is not in the history", 0},
         {"UPDATE recordings SET path = '/b'", "recording 1: path", 0},
+        {"UPDATE sessions SET case_minus_boottime_ns = 1", "session 1: case_minus_boottime_ns", 0},
+        {"UPDATE sessions SET ended_utc_ns = 1", "session 1: ended_utc_ns", 0},
+        {"DELETE FROM sessions", "session 1 is in the history and not in the case", 0},
+        {"INSERT INTO sessions SELECT 2, 'v', host, boot_id, pid, process_start, rater, "
+         "begun_utc_ns, case_minus_boottime_ns, tie_error_ns, 1 FROM sessions",
+         "session 2 is not in the history", 0},
+        {"UPDATE clocks SET clock = '[[0,1,3,1,0]]'", "clock of recording 2: clock", 0},
+        {"DELETE FROM clocks", "clock of recording 2 is in the history", 0},
+        {"INSERT INTO clocks VALUES (1, '[[0,1,3,1,0]]')",
+         "clock of recording 1 is not in the history", 0},
         {"DELETE FROM recordings", "recording 1 is in the history", 0},
         {"UPDATE case_info SET subject = 'S-2'", "subject", 0},
         {"UPDATE case_info SET codebook = 'y'", "codebook_digest", 0},

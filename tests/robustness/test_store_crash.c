@@ -6,7 +6,6 @@
 
 #include <errno.h>
 #include <signal.h>
-#include <sqlite3.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
@@ -15,6 +14,7 @@
 #include <time.h>
 #include <unistd.h>
 
+#include "robustness/faulty_vfs.h"
 #include "store/store.h"
 
 static char folder[] = "/tmp/incisura-crash-XXXXXX";
@@ -142,159 +142,7 @@ Test(store_crash, a_full_disk_loses_nothing_that_was_stored)
     cr_expect_eq(stored(&greatest), told + 1);
 }
 
-/* ---- a disk that fails the Nth write, sync, truncation or lock ---- */
-
-static sqlite3_vfs faulty;
-static sqlite3_vfs *real;
-static int fail_at, calls;
-static bool lasting;
-
-struct faulty_file {
-    sqlite3_file base;
-    sqlite3_file *real;
-};
-
-static bool fails(void)
-{
-    int call = ++calls;
-    return fail_at > 0 && (call == fail_at || (lasting && call > fail_at));
-}
-
-static sqlite3_file *under(sqlite3_file *file)
-{
-    return ((struct faulty_file *)(void *)file)->real;
-}
-
-static int f_close(sqlite3_file *file)
-{
-    int code = under(file)->pMethods->xClose(under(file));
-    free(under(file));
-    return code;
-}
-
-static int f_read(sqlite3_file *file, void *to, int size, sqlite3_int64 at)
-{
-    return under(file)->pMethods->xRead(under(file), to, size, at);
-}
-
-static int f_write(sqlite3_file *file, const void *from, int size, sqlite3_int64 at)
-{
-    return fails() ? SQLITE_IOERR_WRITE
-                   : under(file)->pMethods->xWrite(under(file), from, size, at);
-}
-
-static int f_truncate(sqlite3_file *file, sqlite3_int64 size)
-{
-    return fails() ? SQLITE_IOERR_TRUNCATE : under(file)->pMethods->xTruncate(under(file), size);
-}
-
-static int f_sync(sqlite3_file *file, int flags)
-{
-    return fails() ? SQLITE_IOERR_FSYNC : under(file)->pMethods->xSync(under(file), flags);
-}
-
-static int f_size(sqlite3_file *file, sqlite3_int64 *size)
-{
-    return under(file)->pMethods->xFileSize(under(file), size);
-}
-
-static int f_lock(sqlite3_file *file, int level)
-{
-    return fails() ? SQLITE_IOERR_LOCK : under(file)->pMethods->xLock(under(file), level);
-}
-
-static int f_unlock(sqlite3_file *file, int level)
-{
-    return under(file)->pMethods->xUnlock(under(file), level);
-}
-
-static int f_reserved(sqlite3_file *file, int *out)
-{
-    return under(file)->pMethods->xCheckReservedLock(under(file), out);
-}
-
-static int f_control(sqlite3_file *file, int op, void *argument)
-{
-    return under(file)->pMethods->xFileControl(under(file), op, argument);
-}
-
-static int f_sector(sqlite3_file *file)
-{
-    return under(file)->pMethods->xSectorSize(under(file));
-}
-
-static int f_device(sqlite3_file *file)
-{
-    return under(file)->pMethods->xDeviceCharacteristics(under(file));
-}
-
-static int f_shm_map(sqlite3_file *file, int page, int size, int extend, void volatile **out)
-{
-    return fails() ? SQLITE_IOERR_SHMMAP
-                   : under(file)->pMethods->xShmMap(under(file), page, size, extend, out);
-}
-
-static int f_shm_lock(sqlite3_file *file, int offset, int n, int flags)
-{
-    return under(file)->pMethods->xShmLock(under(file), offset, n, flags);
-}
-
-static void f_shm_barrier(sqlite3_file *file)
-{
-    under(file)->pMethods->xShmBarrier(under(file));
-}
-
-static int f_shm_unmap(sqlite3_file *file, int remove)
-{
-    return under(file)->pMethods->xShmUnmap(under(file), remove);
-}
-
-static const sqlite3_io_methods methods = {
-    .iVersion = 2,
-    .xClose = f_close,
-    .xRead = f_read,
-    .xWrite = f_write,
-    .xTruncate = f_truncate,
-    .xSync = f_sync,
-    .xFileSize = f_size,
-    .xLock = f_lock,
-    .xUnlock = f_unlock,
-    .xCheckReservedLock = f_reserved,
-    .xFileControl = f_control,
-    .xSectorSize = f_sector,
-    .xDeviceCharacteristics = f_device,
-    .xShmMap = f_shm_map,
-    .xShmLock = f_shm_lock,
-    .xShmBarrier = f_shm_barrier,
-    .xShmUnmap = f_shm_unmap,
-};
-
-static int f_open(sqlite3_vfs *vfs, const char *name, sqlite3_file *file, int flags, int *out)
-{
-    (void)vfs;
-    struct faulty_file *made = (struct faulty_file *)(void *)file;
-    made->base.pMethods = NULL;
-    if (fails())
-        return SQLITE_CANTOPEN;
-    made->real = calloc(1, (size_t)real->szOsFile);
-    int code = real->xOpen(real, name, made->real, flags, out);
-    if (code == SQLITE_OK)
-        made->base.pMethods = &methods;
-    else
-        free(made->real);
-    return code;
-}
-
-static void install(void)
-{
-    real = sqlite3_vfs_find(NULL);
-    faulty = *real;
-    faulty.szOsFile = sizeof(struct faulty_file);
-    faulty.zName = "faulty";
-    faulty.xOpen = f_open;
-    faulty.pNext = NULL;
-    cr_assert_eq(sqlite3_vfs_register(&faulty, 1), SQLITE_OK);
-}
+/* ---- a disk that fails the Nth call ---- */
 
 /* Create, add two, change, undo; returns how many marks were said to be stored. */
 static int64_t session(void)
@@ -322,18 +170,18 @@ static int64_t session(void)
 
 Test(store_crash, every_failing_call)
 {
-    install();
+    faulty_install();
     for (int mode = 0; mode < 2; mode++) {
-        lasting = mode == 1;
+        faulty_lasting = mode == 1;
         int total = 1;
-        for (fail_at = 0; fail_at <= total; fail_at++) {
+        for (faulty_at = 0; faulty_at <= total; faulty_at++) {
             int64_t greatest;
-            calls = 0;
+            faulty_calls = 0;
             int64_t told = session();
-            if (fail_at == 0)
-                total = calls; /* the first run, without a fault, counts them */
-            int at = fail_at;
-            fail_at = 0;
+            if (faulty_at == 0)
+                total = faulty_calls; /* the first run, without a fault, counts them */
+            int at = faulty_at;
+            faulty_at = 0;
             if (access(path, F_OK) == 0) {
                 int64_t count = stored(&greatest);
                 cr_assert_geq(count, told, "call %d of %d: told %d, stored %d", at, total,
@@ -344,7 +192,7 @@ Test(store_crash, every_failing_call)
             char command[128];
             (void)snprintf(command, sizeof command, "rm -f %s*", path);
             cr_assert_eq(system(command), 0);
-            fail_at = at;
+            faulty_at = at;
         }
         cr_expect_gt(total, 30, "calls that can fail: %d", total);
     }
