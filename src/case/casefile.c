@@ -10,6 +10,8 @@
 
 #include "base/array.h"
 #include "case/casefile_impl.h"
+#include "store/live.h"
+#include "timeline/clock_text.h"
 #include "trace/channel_trace.h"
 
 static const char sqlite_magic[] = "SQLite format 3";
@@ -23,6 +25,7 @@ static void loaded_free(struct loaded *loaded)
         trace_free(loaded->traces[i]);
     free(loaded->traces);
     recording_close(loaded->recording);
+    arena_free(&loaded->clock_arena);
     free(loaded);
 }
 
@@ -86,7 +89,27 @@ static int add_traces(struct casefile *casefile, struct loaded *loaded, struct e
     return failed;
 }
 
-/* Opens the file at `path` into `loaded`, laid on case time by the wall clocks. */
+/* The fitted clock of a recording, where it has one, instead of the wall clocks. */
+static int fit_clock(struct casefile *casefile, struct loaded *loaded, struct err *err)
+{
+    struct clock_map *map = &loaded->attached.map;
+    struct clock_piece *pieces = NULL;
+    const char *text = "";
+    int failed =
+        casefile->store && loaded->attached.id > 0
+            ? store_clock(casefile->store, loaded->attached.id, &loaded->clock_arena, &text, err)
+            : ERR_OK;
+    if (!failed)
+        failed = clock_text_parse(text, &loaded->clock_arena, &pieces, &map->piece_count, err);
+    if (!failed && map->piece_count > 0) {
+        map->pieces = pieces;
+        map->aligned = true;
+    }
+    return failed;
+}
+
+/* Opens the file at `path` into `loaded`, laid on case time by its fitted clock, or by the wall
+ * clocks. */
 static int load(struct casefile *casefile, struct loaded *loaded, const char *path,
                 const struct reader_options *options, struct err *err)
 {
@@ -100,7 +123,8 @@ static int load(struct casefile *casefile, struct loaded *loaded, const char *pa
         casefile->epoch_civil_ns = loaded->attached.info->start_civil_ns;
     loaded->attached.map =
         clock_map_on_trust(loaded->attached.info->start_civil_ns, casefile->epoch_civil_ns);
-    return add_traces(casefile, loaded, err);
+    failed = fit_clock(casefile, loaded, err);
+    return failed ? failed : add_traces(casefile, loaded, err);
 }
 
 static int append(struct casefile *casefile, struct loaded *loaded, struct err *err)
@@ -325,6 +349,13 @@ int casefile_attach(struct casefile *casefile, const char *path,
         loaded_free(loaded);
     }
     return failed;
+}
+
+struct store *casefile_release_store(struct casefile *casefile)
+{
+    struct store *store = casefile->store;
+    casefile->store = NULL;
+    return store;
 }
 
 const char *casefile_name(const struct casefile *casefile)

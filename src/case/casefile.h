@@ -53,6 +53,8 @@ MUST_CHECK int casefile_attach(struct casefile *casefile, const char *path,
 const char *casefile_name(const struct casefile *casefile); /* "S-204" of "/x/S-204.case" */
 const char *casefile_path(const struct casefile *casefile);
 struct store *casefile_store(struct casefile *casefile); /* NULL for a bare recording */
+/* Hands the store over to the caller, who closes it; the case goes on without one. */
+struct store *casefile_release_store(struct casefile *casefile);
 const struct codebook *casefile_codebook(const struct casefile *casefile);
 int64_t casefile_epoch_civil_ns(const struct casefile *casefile); /* NS_NONE: not fixed yet */
 int casefile_utc_offset_s(const struct casefile *casefile);

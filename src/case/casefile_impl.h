@@ -15,6 +15,7 @@ struct loaded {
     struct trace **traces;       /* shape (info->channel_count) */
     char digest[DIGEST_TEXT_SIZE];
     char problem[320];
+    struct arena clock_arena; /* pieces of attached.map */
 };
 
 /* One answered request, kept for the next time it is asked. */

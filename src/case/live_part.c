@@ -105,6 +105,7 @@ int part_name(struct part *part, struct err *err)
     }
     free(part->path);
     part->path = path.text;
+    part->stream->status.named++;
     return ERR_OK;
 }
 

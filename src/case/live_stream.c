@@ -112,7 +112,7 @@ static double drift_ppm(const struct live_stream *stream)
     struct clock_piece piece;
     const struct part *part = stream->part_count > 0 ? stream->parts[stream->part_count - 1] : NULL;
     if (!part || !arrival_tells_drift(&part->fit) || !arrival_piece(&part->fit, 0, &piece))
-        return NAN;
+        return (double)NAN;
     return clock_piece_drift_ppm(&piece);
 }
 

@@ -54,6 +54,7 @@ struct live_status {
     int64_t last_boottime_ns; /* when something came last; NS_NONE = never */
     double drift_ppm;         /* of the present stretch; NaN while it is too short to tell */
     size_t part_count;
+    int64_t named; /* how often a part got its file's name: when it grows, the store must be told */
 };
 
 /* What the store must keep of a part. Texts and pieces are valid until the next call of

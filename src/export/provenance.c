@@ -51,16 +51,35 @@ static int marks_digest(struct store *store, char out[DIGEST_TEXT_SIZE], struct 
     return failed;
 }
 
+/* The pieces of a fitted clock: where each begins, on both clocks, its drift and its error. */
+static json_t *clock_json(const struct clock_map *map)
+{
+    json_t *list = json_array();
+    for (size_t i = 0; list && i < map->piece_count; i++) {
+        const struct clock_piece *piece = &map->pieces[i];
+        json_t *item =
+            json_pack("{s:f, s:f, s:f, s:f}", "recording_s", s_from_ns(piece->at_ns), "case_s",
+                      s_from_ns(piece->case_ns), "drift_ppm", clock_piece_drift_ppm(piece),
+                      "standard_error_s", s_from_ns(piece->error_ns));
+        if (json_array_append_new(list, item) != 0) {
+            json_decref(list);
+            return NULL;
+        }
+    }
+    return list;
+}
+
 static json_t *recordings_json(const struct export_job *job)
 {
     json_t *list = json_array();
     for (size_t i = 0; list && i < casefile_recording_count(job->casefile); i++) {
         const struct attached *attached = casefile_recording(job->casefile, i);
-        json_t *item = json_pack("{s:I, s:s, s:s, s:b, s:o}", "recording", (json_int_t)attached->id,
-                                 "digest", attached->digest, "format",
+        json_t *item = json_pack("{s:I, s:s, s:s, s:b, s:o, s:o}", "recording",
+                                 (json_int_t)attached->id, "digest", attached->digest, "format",
                                  attached->info ? attached->info->format : "not readable",
                                  "clock_aligned", attached->map.aligned, "clock_offset_s",
-                                 json_real(s_from_ns(attached->map.offset_ns)));
+                                 json_real(s_from_ns(clock_map_to_case(&attached->map, 0))),
+                                 "clock", clock_json(&attached->map));
         if (json_array_append_new(list, item) != 0) {
             json_decref(list);
             return NULL;

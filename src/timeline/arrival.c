@@ -8,7 +8,10 @@
 #include <stddef.h>
 
 #define DRIFT_AFTER_NS (30 * NS_PER_S)
-#define DRIFT_MOST     2e-2
+/* A device that is said to send at another rate than it does, or a recording that is played
+ * faster, is off by more than any crystal; what runs backwards or stands still is no clock. */
+#define SLOPE_LEAST -0.9999
+#define SLOPE_MOST  9.0
 /* A drift that no crystal has, but a device whose rate is not what it says, is plain much sooner.
  */
 #define CLEAR_AFTER_NS (5 * NS_PER_S)
@@ -51,7 +54,7 @@ static struct arrival_point meeting(const struct arrival_point *hull, int at, do
 static void thin(struct arrival_fit *fit)
 {
     struct arrival_point best = {0};
-    double least = INFINITY;
+    double least = HUGE_VAL;
     int at = 1;
     for (int i = 1; i + 2 < fit->count; i++) {
         double deep;
@@ -105,7 +108,7 @@ static double above(const struct arrival_fit *fit, const struct arrival_point *p
 /* late_ns at first_own_ns of the highest line of this slope under all points. */
 static double intercept(const struct arrival_fit *fit, double slope)
 {
-    double least = INFINITY;
+    double least = HUGE_VAL;
     for (int i = 0; i < fit->count; i++)
         least = fmin(least, above(fit, &fit->hull[i], slope));
     return least;
@@ -187,7 +190,7 @@ bool arrival_tells_drift(const struct arrival_fit *fit)
     if (length_ns >= (double)DRIFT_AFTER_NS)
         return bend_ns < ARRIVAL_CRYSTAL_PPM * 1e-6 * length_ns ||
                CLEAR_TIMES * bend_ns < fabs(slope) * length_ns;
-    return fit->points >= CLEAR_POINTS && fabs(slope) >= CLEAR_DRIFT && fabs(slope) <= DRIFT_MOST &&
+    return fit->points >= CLEAR_POINTS && fabs(slope) >= CLEAR_DRIFT &&
            CLEAR_TIMES * bend_ns < fabs(slope) * length_ns;
 }
 
@@ -198,9 +201,9 @@ bool arrival_piece(const struct arrival_fit *fit, int64_t case_minus_boottime_ns
         return false;
     bool drifts = arrival_tells_drift(fit);
     double slope = drifts ? hull_slope(fit) : 0;
-    bool held = fabs(slope) > DRIFT_MOST;
+    bool held = slope < SLOPE_LEAST || slope > SLOPE_MOST;
     if (held)
-        slope = slope < 0 ? -DRIFT_MOST : DRIFT_MOST;
+        slope = slope < SLOPE_LEAST ? SLOPE_LEAST : SLOPE_MOST;
     double length_ns = (double)(fit->last_own_ns - fit->first_own_ns);
     double unknown_ns = drifts ? 0 : ARRIVAL_CRYSTAL_PPM * 1e-6 * length_ns;
     double spread_ns = envelope_error_ns(fit, slope, held);

@@ -53,8 +53,8 @@ struct arrival_fit {
 void arrival_add(struct arrival_fit *fit, int64_t own_ns, int64_t boottime_ns);
 
 /* The fit so far, as a piece from the first point on whose case times are boottimes plus
- * case_minus_boottime_ns. A device's rate may be other than it says: drifts up to
- * 2 % are followed, and greater ones held there. false when nothing has come. */
+ * case_minus_boottime_ns. A slope far from 1 is followed: the rate that a stream is said to have
+ * may be wrong, or a recording played faster. false when nothing has come. */
 bool arrival_piece(const struct arrival_fit *fit, int64_t case_minus_boottime_ns,
                    struct clock_piece *out);
 
