@@ -186,7 +186,7 @@ build/bench/%: tests/bench/%.c $(release_SCREENS) $(release_LIB)
 	@$(CC) $(BASE_CFLAGS) $(release_CFLAGS) $^ $(LIBS) -o $@
 -include $(BENCHES:=.d)
 
-bench: build $(BENCHES)
+bench: build build/theatre $(BENCHES)
 	@tests/bench/run
 
 layers:

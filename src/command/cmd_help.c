@@ -23,7 +23,13 @@ void help_wrap(FILE *to, int indent, const char *text)
 {
     int column = 0;
     while (*text) {
-        int length = (int)strcspn(text, " ");
+        if (*text == '\n') { /* a paragraph */
+            (void)fputs(column > 0 ? "\n\n" : "\n", to);
+            column = 0;
+            text += strspn(text, "\n");
+            continue;
+        }
+        int length = (int)strcspn(text, " \n");
         if (column > 0 && column + 1 + length > WIDTH - 1) {
             (void)fputc('\n', to);
             column = 0;

@@ -166,12 +166,15 @@ static json_t *number_or_null(double value, bool there)
 static json_t *mark_json(const struct mark *mark)
 {
     return json_pack(
-        "{s:I, s:s, s:f, s:o, s:o, s:s, s:s, s:s, s:s, s:s, s:s, s:f}", "id", (json_int_t)mark->id,
-        "code", mark->code, "onset_s", s_from_ns(mark->onset_ns), "until_s",
+        "{s:I, s:s, s:f, s:o, s:o, s:s, s:s, s:s, s:s, s:s, s:s, s:f, s:s, s:o, s:I}", "id",
+        (json_int_t)mark->id, "code", mark->code, "onset_s", s_from_ns(mark->onset_ns), "until_s",
         number_or_null(seconds_or_nan(mark->until_ns), mark->until_ns != NS_NONE), "value",
         number_or_null(mark->value, mark->has_value), "unit", mark->unit, "route", mark->route,
         "note", mark->note, "state", mark_state_name(mark->state), "source",
-        mark_source_name(mark->source), "rater", mark->rater, "error_s", s_from_ns(mark->error_ns));
+        mark_source_name(mark->source), "rater", mark->rater, "error_s", s_from_ns(mark->error_ns),
+        "stamp_clock", mark->stamp_clock, "stamp_ns",
+        mark->stamp_ns == NS_NONE ? json_null() : json_integer(mark->stamp_ns), "stamp_utc_ns",
+        (json_int_t)mark->stamp_utc_ns);
 }
 
 static int print_json(const struct mark *const *marks, size_t count, struct err *err)

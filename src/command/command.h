@@ -90,6 +90,11 @@ int command_fail(const struct arguments *arguments, const struct err *err);
 MUST_CHECK int command_open(const struct arguments *arguments, enum store_mode mode,
                             struct casefile **out, struct err *err);
 
+/* The case named by args[0] for a live session: of what earlier ones left, recordings larger than
+ * `most_bytes` wait, as a person in theatre cannot. */
+MUST_CHECK int command_open_live(const struct arguments *arguments, int64_t most_bytes,
+                                 struct casefile **out, struct err *err);
+
 /* The case named by args[0], its store alone, for reading. */
 MUST_CHECK int command_open_store(const struct arguments *arguments, struct store **out,
                                   struct err *err);

@@ -37,6 +37,7 @@ extern const struct command command_import;
 extern const struct command command_inspect;
 extern const struct command command_mark;
 extern const struct command command_marks;
+extern const struct command command_live;
 extern const struct command command_review;
 extern const struct command command_start;
 

@@ -10,7 +10,9 @@
 #include <unistd.h>
 
 #include "base/str.h"
+#include "case/live_case.h"
 #include "command/command.h"
+#include "store/second_place.h"
 
 int command_fail(const struct arguments *arguments, const struct err *err)
 {
@@ -63,6 +65,63 @@ static void tell_newer(const struct arguments *arguments, const struct store *st
             arguments->command->name, store_path(store));
 }
 
+/* Before a case is changed, what earlier live sessions left comes in: marks that could not be saved
+ * then, and streams that a crash left open. That it cannot be now is no reason not to go on. */
+static void settle(const struct arguments *arguments, const char *path, int64_t most_bytes)
+{
+    struct store *store = NULL;
+    struct settled settled = {0};
+    struct err why = {0};
+    const char *command = arguments->command->name;
+    if (store_open(path, STORE_WRITE, argument(arguments, "rater"), &store, NULL))
+        return; /* opening it next says why */
+    if (live_case_settle(store, most_bytes, &settled, &why))
+        (void)fprintf(stderr,
+                      "incisura %s: note: what a live session left could not be brought in: "
+                      "%s\n",
+                      command, why.text);
+    if (settled.changes > 0)
+        (void)fprintf(stderr,
+                      "incisura %s: note: %lld changes of marks that could not be saved then "
+                      "were brought in from the second place\n",
+                      command, (long long)settled.changes);
+    if (settled.damaged > 0)
+        (void)fprintf(stderr,
+                      "incisura %s: note: %lld lines of the second place are damaged; they "
+                      "are kept there as .damaged\n",
+                      command, (long long)settled.damaged);
+    if (settled.recordings > 0)
+        (void)fprintf(stderr, "incisura %s: note: %lld streamed recordings were attached\n",
+                      command, (long long)settled.recordings);
+    store_close(store);
+}
+
+/* A program that only reads says what is missing. */
+static void tell_waiting(const struct arguments *arguments, struct store *store)
+{
+    int64_t files = 0;
+    if (store && second_place_count(store, &files, NULL) == ERR_OK && files > 0)
+        (void)fprintf(
+            stderr,
+            "incisura %s: note: marks of %s wait in the second place; `incisura review` or "
+            "`live` brings them in\n",
+            arguments->command->name, store_path(store));
+}
+
+int command_open_live(const struct arguments *arguments, int64_t most_bytes, struct casefile **out,
+                      struct err *err)
+{
+    struct str path = {0};
+    int failed = named_path(arguments, &path, err);
+    if (!failed) {
+        settle(arguments, str_text(&path), most_bytes);
+        failed = casefile_open(str_text(&path), STORE_WRITE, argument(arguments, "rater"), NULL,
+                               out, err);
+    }
+    str_free(&path);
+    return failed;
+}
+
 int command_open(const struct arguments *arguments, enum store_mode mode, struct casefile **out,
                  struct err *err)
 {
@@ -71,11 +130,15 @@ int command_open(const struct arguments *arguments, enum store_mode mode, struct
     int failed = command_reader_options(arguments, &options, err);
     if (!failed)
         failed = named_path(arguments, &path, err);
+    if (!failed && mode == STORE_WRITE)
+        settle(arguments, str_text(&path), INT64_MAX);
     if (!failed)
         failed =
             casefile_open(str_text(&path), mode, argument(arguments, "rater"), &options, out, err);
-    if (!failed)
+    if (!failed) {
         tell_newer(arguments, casefile_store(*out));
+        tell_waiting(arguments, mode == STORE_READ ? casefile_store(*out) : NULL);
+    }
     str_free(&path);
     return failed;
 }
@@ -86,8 +149,10 @@ int command_open_store(const struct arguments *arguments, struct store **out, st
     int failed = named_path(arguments, &path, err);
     if (!failed)
         failed = store_open(str_text(&path), STORE_READ, NULL, out, err);
-    if (!failed)
+    if (!failed) {
         tell_newer(arguments, *out);
+        tell_waiting(arguments, *out);
+    }
     str_free(&path);
     return failed;
 }

@@ -11,19 +11,13 @@
 #include "command/command_impl.h"
 
 const struct command *const commands[] = {
-    &command_start,
-    &command_attach,
-    &command_review,
-    &command_mark,
-    &command_marks,
-    &command_import,
-    &command_history,
-    &command_inspect,
-    &command_derive,
-    &command_export,
-    &command_frame,
-    &command_help,
-    NULL,
+    &command_start,   &command_attach,
+    &command_live,    &command_review,
+    &command_mark,    &command_marks,
+    &command_import,  &command_history,
+    &command_inspect, &command_derive,
+    &command_export,  &command_frame,
+    &command_help,    NULL,
 };
 
 static const struct command *find(const char *name)

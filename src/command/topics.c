@@ -10,6 +10,7 @@
 #include "physiology/derivation.h"
 #include "recording/reader.h"
 #include "terminal/actions.h"
+#include "terminal/live.h"
 
 static void print_times(FILE *to)
 {
@@ -17,7 +18,7 @@ static void print_times(FILE *to)
                 "  09:41:12.250           time of day; taken from 6 h before to 18 h after the\n"
                 "                         case's start, so that a night case works\n"
                 "  +00:34:07.5  +2047.5   from the case's start: the start of its first\n"
-                "                         recording, fixed once\n"
+                "                         recording or live session, fixed once\n"
                 "  2031-05-20T09:41:12    date and time on the theatre's wall clock\n"
                 "  2031-05-20T07:41:12Z   the same in UTC, or with an offset: +02:00\n"
                 "A span is written 10s, 250ms, 2min or 1h.\n",
@@ -30,6 +31,28 @@ static void print_formats(FILE *to)
     for (size_t i = 0; readers[i]; i++)
         (void)fprintf(to, "  %-8s %s\n", readers[i]->name, readers[i]->suffixes);
     (void)fputs("They are read in place and never written to.\n", to);
+}
+
+static void print_sources(FILE *to)
+{
+    (void)fputs(
+        "A live source is written in one of these ways:\n"
+        "  fifo:PATH             a named pipe\n"
+        "  serial:DEVICE@BAUD    a serial line, 8N1: serial:/dev/ttyUSB0@115200\n"
+        "  tcp:HOST:PORT         a connection out; the program never listens\n"
+        "  -                     standard input\n"
+        "  PATH                  a file that grows\n"
+        "It sends lines or records, told apart by the first bytes:\n"
+        "  lines    a header `t,ECG II [mV],EDA [uS]`, then rows of numbers; comma, semicolon or\n"
+        "           tab; t is seconds (or a time) on the device's clock, and may be missing with\n"
+        "           --rate HZ; an empty cell or NaN is a missing sample\n"
+        "  records  an EDF, EDF+, BDF or BDF+ file from its first byte on, header first, the\n"
+        "           number of records not known (-1)\n"
+        "What comes is written as it comes, as CASE-live-1.bdf and so on beside the case: valid\n"
+        "after any crash, flushed every two seconds. A lost connection is a gap, and is tried\n"
+        "again; another header begins another file. The device's clock is fitted to the\n"
+        "laptop's while it runs. On leaving, the files are attached to the case.\n",
+        to);
 }
 
 static void print_roles(FILE *to)
@@ -54,6 +77,8 @@ static void print_codebook(FILE *to)
                 "  class       group on the screen; drug classes have the colours of ISO 26825\n"
                 "  pairs-with  a code that must follow this one\n"
                 "  required    yes, when a case without it is incomplete\n"
+                "  timer       yes: the live screen shows how long ago it was\n"
+                "  least most  plausible values; the live screen asks once about others\n"
                 "  help        one sentence\n"
                 "A bad codebook is refused with its line and column. The default one:\n",
                 to);
@@ -119,7 +144,12 @@ static void print_recipe(FILE *to)
 static void print_keys(FILE *to)
 {
     int group = -1;
-    (void)fputs("Keys of the review screen. Letters drop the marks of the case's codebook.\n", to);
+    const char *key, *text;
+    (void)fputs("Keys of the live screen\n", to);
+    for (size_t i = 0; live_tool_key(i, &key, &text); i++)
+        (void)fprintf(to, "  %-10s %s\n", key, text);
+    (void)fputs("\nKeys of the review screen. Letters drop the marks of the case's codebook.\n",
+                to);
     for (size_t i = 0; action_at(i); i++) {
         const struct action_entry *entry = action_at(i);
         if ((int)entry->group != group)
@@ -132,11 +162,12 @@ static void print_keys(FILE *to)
 const struct topic topics[] = {
     {"times", "how times and spans are written", print_times},
     {"formats", "recordings that can be read", print_formats},
+    {"sources", "what streams into the live screen", print_sources},
     {"roles", "what a channel can be", print_roles},
     {"codebook", "the list of events, and the default one", print_codebook},
     {"derivations", "derived traces and event trains, with parameters and sources",
      print_derivations},
-    {"keys", "keys of the review screen", print_keys},
+    {"keys", "keys of the live and the review screen", print_keys},
     {"recipe", "which windows to export", print_recipe},
     {NULL, NULL, NULL},
 };
