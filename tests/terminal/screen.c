@@ -172,6 +172,27 @@ static int64_t now_ms(void)
     return (int64_t)now.tv_sec * 1000 + now.tv_nsec / 1000000;
 }
 
+/* The letter after the name in /proc/PID/stat. */
+static char state_of(pid_t pid)
+{
+    char path[64], line[512] = "";
+    (void)snprintf(path, sizeof path, "/proc/%d/stat", (int)pid);
+    FILE *file = fopen(path, "r");
+    if (!file)
+        return '?';
+    const char *end = fgets(line, sizeof line, file) ? strrchr(line, ')') : NULL;
+    (void)fclose(file);
+    return end && end[1] ? end[2] : '?';
+}
+
+bool screen_stopped(const struct screen *screen)
+{
+    int64_t end = now_ms() + PATIENCE_MS;
+    while (state_of(screen->program) != 'T' && now_ms() < end)
+        (void)poll(NULL, 0, 5);
+    return state_of(screen->program) == 'T';
+}
+
 static bool wait_until(struct screen *screen, const char *text, bool there)
 {
     int64_t end = now_ms() + PATIENCE_MS;

@@ -33,6 +33,9 @@ bool screen_left(struct screen *screen);
 bool screen_cooked(const struct screen *screen);
 bool screen_raw(const struct screen *screen);
 
+/* Waits until the program is stopped, as by ^Z. */
+bool screen_stopped(const struct screen *screen);
+
 /* Waits until the program ends; its exit status, -1 when it does not end or was killed. Frees. */
 int screen_end(struct screen *screen);
 /* Sends the program a signal. */

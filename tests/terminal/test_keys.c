@@ -191,12 +191,17 @@ static void flood(struct screen *screen)
     screen_check(screen, reported("busy", 0, &ns), "the terminal, not read from, takes no more");
 }
 
+/* The last row is painted last, and from the left: what stands at its end has come last of all. */
 static bool all_as_drawn(struct screen *screen)
 {
-    bool good = true;
+    enum { STATE = 9 }; /* columns of "it is dry" */
+    char last[COLUMNS - STATE + 1] = "";
+    for (int i = 0; i < COLUMNS - STATE; i++)
+        last[i] = (char)('A' + ((ROWS - 1) * COLUMNS + STATE + i + DRY) % 26);
+    bool good = screen_shows(screen, last);
     for (int row = 0; row < ROWS; row++) {
         const char *text = screen_row(screen, row);
-        for (int column = row == ROWS - 1 ? 9 : 0; column < COLUMNS; column++)
+        for (int column = row == ROWS - 1 ? STATE : 0; column < COLUMNS; column++)
             good &= text[column] == 'A' + (row * COLUMNS + column + DRY) % 26;
     }
     return good;

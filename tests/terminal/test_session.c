@@ -62,6 +62,7 @@ static void test_stop(bool by_key)
         screen_signal(screen, SIGTSTP);
     screen_check(screen, screen_left(screen) && screen_cooked(screen),
                  by_key ? "^Z gives the terminal back" : "SIGTSTP gives the terminal back");
+    screen_check(screen, screen_stopped(screen), "and stops");
     screen_signal(screen, SIGCONT);
     bool painted = screen_shows(screen, "ECG II") && screen_shows(screen, "+00:00:00");
     screen_check(screen, painted && screen_taken(screen), "going on paints it all again");

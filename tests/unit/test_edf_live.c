@@ -37,7 +37,7 @@ static void tear_down(void)
     (void)rmdir(folder);
 }
 
-TestSuite(edf_live, .init = set_up, .fini = tear_down, .timeout = 120);
+TestSuite(edf_live, .init = set_up, .fini = tear_down);
 
 static const struct edf_channel_spec channels[] = {
     {"ECG II", "mV", "an electrode with a description that fills the whole field of eighty, or so",

@@ -288,7 +288,7 @@ static void *write_all(void *context)
     return NULL;
 }
 
-Test(growing, a_reader_beside_the_writer_sees_whole_truth, .timeout = 120)
+Test(growing, a_reader_beside_the_writer_sees_whole_truth)
 {
     struct plain *plain = plain_new();
     struct writing job = {make(plain), plain, false, 0};

@@ -21,7 +21,7 @@
 #include "live_feed.h"
 #include "recording/edf_repair.h"
 
-TestSuite(live_faults, .init = feed_set_up, .fini = feed_tear_down, .timeout = 120);
+TestSuite(live_faults, .init = feed_set_up, .fini = feed_tear_down);
 
 static const struct stream_channel channels[] = {
     {"ECG II", "mV", ROLE_ECG, "", "", 0, 0, 0, 0, 100},

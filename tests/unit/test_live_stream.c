@@ -12,7 +12,7 @@
 
 #include "live_feed.h"
 
-TestSuite(live_stream, .init = feed_set_up, .fini = feed_tear_down, .timeout = 120);
+TestSuite(live_stream, .init = feed_set_up, .fini = feed_tear_down);
 
 /* Records of a second of a 16-bit device, whose physical limits are not symmetric. */
 static const struct stream_channel edf_channels[] = {
