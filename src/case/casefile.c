@@ -24,6 +24,7 @@ static void loaded_free(struct loaded *loaded)
     for (size_t i = 0; loaded->traces && i < loaded->attached.info->channel_count; i++)
         trace_free(loaded->traces[i]);
     free(loaded->traces);
+    free((void *)loaded->shown);
     recording_close(loaded->recording);
     arena_free(&loaded->clock_arena);
     free(loaded);
@@ -34,6 +35,9 @@ void casefile_close(struct casefile *casefile)
     if (!casefile)
         return;
     kept_free(casefile);
+    for (size_t i = 0; i < casefile->joined_count; i++)
+        trace_free(casefile->joined[i]);
+    free(casefile->joined);
     for (size_t i = 0; i < casefile->loaded_count; i++)
         loaded_free(casefile->loaded[i]);
     codebook_free(casefile->codebook);
@@ -68,11 +72,12 @@ static char *channel_name(const struct casefile *casefile, const char *label)
 static int add_traces(struct casefile *casefile, struct loaded *loaded, struct err *err)
 {
     const struct recording_info *info = loaded->attached.info;
-    void *traces = NULL;
+    void *traces = NULL, *shown = NULL;
     int failed = array_new_zero(&traces, info->channel_count, sizeof *loaded->traces, err);
-    if (failed)
-        return failed;
     loaded->traces = traces;
+    if (!failed)
+        failed = array_new_zero(&shown, info->channel_count, sizeof *loaded->shown, err);
+    loaded->shown = shown;
     for (size_t i = 0; i < info->channel_count && !failed; i++) {
         char *name = channel_name(casefile, info->channels[i].label);
         failed = name ? channel_trace_new(loaded->recording, i, name, &loaded->attached.map,
@@ -85,8 +90,18 @@ static int add_traces(struct casefile *casefile, struct loaded *loaded, struct e
                                casefile->channel_count + info->channel_count,
                                sizeof *casefile->channels, err);
     for (size_t i = 0; i < info->channel_count && !failed; i++)
-        casefile->channels[casefile->channel_count++] = loaded->traces[i];
+        casefile->channels[casefile->channel_count++] = loaded->shown[i] = loaded->traces[i];
     return failed;
+}
+
+/* What a recording that was streamed came from. */
+static int find_source(struct casefile *casefile, struct loaded *loaded, struct err *err)
+{
+    loaded->source = "";
+    if (!casefile->store || loaded->attached.id <= 0)
+        return ERR_OK;
+    return store_stream_source(casefile->store, loaded->attached.id, &loaded->clock_arena,
+                               &loaded->source, err);
 }
 
 /* The fitted clock of a recording, where it has one, instead of the wall clocks. */
@@ -123,7 +138,9 @@ static int load(struct casefile *casefile, struct loaded *loaded, const char *pa
         casefile->epoch_civil_ns = loaded->attached.info->start_civil_ns;
     loaded->attached.map =
         clock_map_on_trust(loaded->attached.info->start_civil_ns, casefile->epoch_civil_ns);
-    failed = fit_clock(casefile, loaded, err);
+    failed = find_source(casefile, loaded, err);
+    if (!failed)
+        failed = fit_clock(casefile, loaded, err);
     return failed ? failed : add_traces(casefile, loaded, err);
 }
 
@@ -196,7 +213,7 @@ static int load_all_stored(struct casefile *casefile, struct err *err)
         if (!failed)
             failed = load_stored(casefile, &stored[i], err);
     }
-    return failed;
+    return failed ? failed : casefile_join(casefile, err);
 }
 
 static int open_case(struct casefile *casefile, enum store_mode mode, const char *rater,
@@ -408,23 +425,6 @@ const struct trace *casefile_channel(const struct casefile *casefile, size_t ind
     return casefile->channels[index];
 }
 
-const struct trace *casefile_channel_find(const struct casefile *casefile, const char *name)
-{
-    const struct trace *loose = NULL;
-    /* Stops at a recording that cannot be read: the name may be that of one of its channels, and
-     * the next recording's would be taken for it. */
-    for (size_t i = 0; i < casefile->loaded_count && casefile->loaded[i]->recording; i++) {
-        const struct loaded *loaded = casefile->loaded[i];
-        for (size_t k = 0; k < loaded->attached.info->channel_count; k++) {
-            if (strcmp(loaded->traces[k]->name, name) == 0)
-                return loaded->traces[k];
-            if (!loose && ascii_equal(loaded->traces[k]->name, name))
-                loose = loaded->traces[k];
-        }
-    }
-    return loose;
-}
-
 static void widen(int64_t from_ns, int64_t to_ns, bool *any, int64_t *low, int64_t *high)
 {
     *low = !*any || from_ns < *low ? from_ns : *low;
@@ -478,15 +478,6 @@ int casefile_overviews(struct casefile *casefile, int threads, struct err *err)
             channel_trace_set_overview(loaded->traces[k], loaded->attached.overview);
     }
     return ERR_OK;
-}
-
-bool casefile_minmax(const struct casefile *casefile, const struct trace *trace, int64_t first,
-                     int64_t count, float *low, float *high)
-{
-    (void)casefile;
-    if (is_channel_trace(trace))
-        return channel_trace_minmax(trace, first, count, low, high);
-    return trace_minmax(trace, first, count, low, high, NULL) == ERR_OK;
 }
 
 int casefile_time(const struct casefile *casefile, const char *text, int64_t *out_ns,

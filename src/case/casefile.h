@@ -64,7 +64,8 @@ const struct attached *casefile_recording(const struct casefile *casefile, size_
 
 /* Channels of all readable recordings, as traces on case time, in attach then file order. A label
  * that occurs in two recordings keeps its plain name in the first, and is "LABEL @2" in the
- * second. */
+ * second; but parts of one live source with the same label, unit and rate are one trace, by the
+ * name of the first. */
 size_t casefile_channel_count(const struct casefile *casefile);
 const struct trace *casefile_channel(const struct casefile *casefile, size_t index);
 /* By name: exact, then any letter case; NULL when there is none, or when a recording attached

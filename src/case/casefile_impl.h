@@ -7,15 +7,20 @@
 #include "base/arena.h"
 #include "base/str.h"
 #include "case/casefile.h"
+#include "trace/channel_trace.h"
 
 /* One loaded recording and its channels as traces. */
 struct loaded {
     struct attached attached;
     struct recording *recording; /* NULL when it has a problem */
     struct trace **traces;       /* shape (info->channel_count) */
+    /* What stands for each of them in the case: itself, what it begins when later parts of its
+     * source go on with it, or NULL when it is such a later part. */
+    const struct trace **shown;
+    const char *source; /* of a recording that was streamed; "" */
     char digest[DIGEST_TEXT_SIZE];
     char problem[320];
-    struct arena clock_arena; /* pieces of attached.map */
+    struct arena clock_arena; /* pieces of attached.map, and source */
 };
 
 /* One answered request, kept for the next time it is asked. */
@@ -34,6 +39,8 @@ struct casefile {
     size_t loaded_count, loaded_room;
     const struct trace **channels; /* all traces of all recordings, shape (channel_count) */
     size_t channel_count, channel_room;
+    struct trace **joined; /* shape (joined_count) */
+    size_t joined_count, joined_room;
     struct kept **kept; /* shape (kept_count) */
     size_t kept_count, kept_room;
 };
@@ -57,6 +64,9 @@ MUST_CHECK int recording_digest(const char *path, struct progress *progress,
 MUST_CHECK int options_text(const struct reader_options *options, struct str *out, struct err *err);
 MUST_CHECK int options_parse(const char *text, struct arena *arena, struct reader_options *out,
                              struct err *err);
+
+/* Joins the parts of each live source, once all recordings are loaded. */
+MUST_CHECK int casefile_join(struct casefile *casefile, struct err *err);
 
 /* Frees every kept derivation. */
 void kept_free(struct casefile *casefile);

@@ -44,8 +44,8 @@ static size_t channels_by_role(const struct casefile *casefile, const struct der
         if (!loaded->recording)
             break;
         for (size_t k = 0; k < loaded->attached.info->channel_count; k++) {
-            if (fits(derivation, loaded->traces[k]))
-                out[count++] = loaded->traces[k];
+            if (loaded->shown[k] && fits(derivation, loaded->shown[k]))
+                out[count++] = loaded->shown[k];
         }
     }
     return count;

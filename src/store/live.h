@@ -89,6 +89,10 @@ MUST_CHECK int store_stream_attach(struct store *store, const struct stored_stre
 /* Drops the row of a stream that left no file. */
 MUST_CHECK int store_stream_drop(struct store *store, const char *path, struct err *err);
 
+/* The source that a recording streamed from, in `arena`; "" when it did not stream. */
+MUST_CHECK int store_stream_source(struct store *store, int64_t recording, struct arena *arena,
+                                   const char **out, struct err *err);
+
 /* The clock of a recording as text in `arena`; "" when it has none. */
 MUST_CHECK int store_clock(struct store *store, int64_t recording, struct arena *arena,
                            const char **out, struct err *err);

@@ -136,6 +136,29 @@ int store_stream_attach(struct store *store, const struct stored_stream *stream,
     return failed;
 }
 
+int store_stream_source(struct store *store, int64_t recording, struct arena *arena,
+                        const char **out, struct err *err)
+{
+    sqlite3_stmt *statement;
+    *out = "";
+    if (store->version < SINCE_VERSION)
+        return ERR_OK;
+    int failed =
+        sql_prepare(store, "SELECT source FROM streams WHERE recording = ?", &statement, err);
+    if (failed)
+        return failed;
+    (void)sqlite3_bind_int64(statement, 1, recording);
+    int code = sqlite3_step(statement);
+    if (code == SQLITE_ROW) {
+        *out = sql_column_text(statement, 0, arena);
+        failed = *out ? ERR_OK : err_memory(err, "a stream");
+    } else if (code != SQLITE_DONE) {
+        failed = sql_error(store, code, err);
+    }
+    (void)sqlite3_finalize(statement);
+    return failed;
+}
+
 /* ---- clocks ---- */
 
 int clocks_each(struct store *store,

@@ -137,16 +137,15 @@ def check_parts():
         whole = whole and good
         samples += len(values) if good else 0
     ok(whole, "no sample of them is lost or doubled")
-    return samples, len(parts)
+    return samples
 
 
-def check_marks(places, parts):
+def check_marks(places):
     """The value under a typed mark says which sample was taken then. Each part of the stream is a
-    recording, and a channel of its own in a recipe; a mark lies in one of them."""
+    recording, and all of them together one channel."""
     recipe, out = os.path.join(folder, "r.ini"), os.path.join(folder, "out")
     with open(recipe, "w") as file:
         file.write(RECIPE)
-        file.writelines(f'count-{n} = channel "Count @{n}"\n' for n in range(2, parts + 1))
     done("export", case, "--recipe", recipe, "--into", out)
     with open(os.path.join(out, "windows-long.csv"), newline="") as file:
         rows = list(csv.DictReader(file))
@@ -175,8 +174,8 @@ def main():
     ok(run("history", case, "--verify").returncode == 0, "the history verifies")
     ok(not glob.glob(os.path.join(folder, "state", "incisura", "unsaved", "*")),
        "the second place is empty")
-    samples, parts = check_parts()
-    late = check_marks(places, parts)
+    samples = check_parts()
+    late = check_marks(places)
     if late:
         print(f"# {samples / 250 / 3600:.2f} h of 250 Hz in {time.monotonic() - began:.0f} s, "
               f"{count} marks; from key to sample: median {late[len(late) // 2]:.1f} ms, "
