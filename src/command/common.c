@@ -91,8 +91,9 @@ static void settle(const struct arguments *arguments, const char *path, int64_t 
                       "are kept there as .damaged\n",
                       command, (long long)settled.damaged);
     if (settled.recordings > 0)
-        (void)fprintf(stderr, "incisura %s: note: %lld streamed recordings were attached\n",
-                      command, (long long)settled.recordings);
+        (void)fprintf(stderr,
+                      "incisura %s: note: attached what streamed in before: %lld recording%s\n",
+                      command, (long long)settled.recordings, settled.recordings == 1 ? "" : "s");
     store_close(store);
 }
 

@@ -39,6 +39,11 @@ struct line_stream {
     struct stream_channel *channels;
     size_t channel_count;
 
+    struct str assumed; /* a header line for rows that come without one: "t,ECG [mV]"; "" = none */
+    size_t assumed_count;
+    size_t assumed_width; /* of the line before, when it could have been such a row */
+    double assumed_hz;
+
     bool rate_known;
     struct line_rate rate;
     float *values;              /* of one row, shape (channel_count) */
@@ -78,7 +83,36 @@ void line_stream_free(struct line_stream *lines)
     free((void *)lines->field);
     free(lines->values);
     free(lines->held);
+    str_free(&lines->assumed);
     free(lines);
+}
+
+static void put_quoted(struct str *out, const char *text)
+{
+    str_putc(out, '"');
+    for (; *text; text++) {
+        if (*text == '"')
+            str_putc(out, '"');
+        str_putc(out, *text);
+    }
+    str_putc(out, '"');
+}
+
+int line_stream_assume(struct line_stream *lines, const char *const *headers, size_t count,
+                       double rate_hz, struct err *err)
+{
+    str_clear(&lines->assumed);
+    str_put(&lines->assumed, "t");
+    for (size_t i = 0; i < count; i++) {
+        str_putc(&lines->assumed, ',');
+        put_quoted(&lines->assumed, headers[i]);
+    }
+    lines->assumed_count = count;
+    lines->assumed_hz = rate_hz;
+    bool good = !str_failed(&lines->assumed) && lines->assumed.length < LINE_MOST;
+    if (!good)
+        lines->assumed_count = 0;
+    return good ? ERR_OK : err_memory(err, "the channels");
 }
 
 bool line_stream_has_header(const struct line_stream *lines)
@@ -251,9 +285,12 @@ static int begin(struct line_stream *lines, bool bare, struct err *err)
     lines->held_count = 0;
     lines->has_header = true;
     lines->rate_known = false;
-    if (lines->rate_hz <= 0)
+    double rate_hz = lines->rate_hz;
+    if (rate_hz <= 0 && lines->time_column == NO_COLUMN)
+        rate_hz = lines->assumed_hz; /* nothing else lets rows without a time in */
+    if (rate_hz <= 0)
         return ERR_OK;
-    lines->rate = line_rate_of_hz(lines->rate_hz);
+    lines->rate = line_rate_of_hz(rate_hz);
     return tell_header(lines, err);
 }
 
@@ -321,34 +358,15 @@ static int put_row(struct line_stream *lines, int64_t own_ns, struct err *err)
     return release(lines, false, err);
 }
 
-static bool all_numbers(const struct line_stream *lines)
+/* Are the fields from `first` on numbers, or missing ones? */
+static bool all_numbers(const struct line_stream *lines, size_t first)
 {
     double value;
-    for (size_t i = 0; i < lines->field_count; i++) {
+    for (size_t i = first; i < lines->field_count; i++) {
         if (!csv_text_missing(lines->field[i]) && !read_number(lines, lines->field[i], &value))
             return false;
     }
     return true;
-}
-
-static int first_line(struct line_stream *lines, struct err *err)
-{
-    int64_t own_ns;
-    lines->delimiter = find_delimiter(lines);
-    if (!split(lines, lines->delimiter)) {
-        garbled(lines, "not a line of numbers");
-        return ERR_OK;
-    }
-    if (looks_like_header(lines))
-        return begin(lines, false, err);
-    if (lines->rate_hz <= 0 || !all_numbers(lines)) {
-        garbled(lines, "no header yet");
-        return ERR_OK;
-    }
-    int failed = begin(lines, true, err);
-    if (!failed && read_row(lines, &own_ns))
-        failed = put_row(lines, own_ns, err);
-    return failed;
 }
 
 static int another_line(struct line_stream *lines, struct err *err)
@@ -368,6 +386,64 @@ static int another_line(struct line_stream *lines, struct err *err)
     return begin(lines, false, err);
 }
 
+/* Could the line, as it is split, be a row of the channels that are assumed? */
+static bool fits_assumed(const struct line_stream *lines)
+{
+    int64_t time;
+    bool timed = lines->field_count == lines->assumed_count + 1;
+    if (lines->assumed_count == 0 || (!timed && lines->field_count != lines->assumed_count))
+        return false;
+    return all_numbers(lines, timed) && (!timed || read_time(lines, lines->field[0], &time));
+}
+
+/* Takes the assumed header as if it had come, then the row that is in the line. */
+static int begin_assumed(struct line_stream *lines, struct err *err)
+{
+    bool timed = lines->field_count == lines->assumed_count + 1;
+    char delimiter = lines->delimiter;
+    size_t skip = timed ? 0 : 2; /* "t," */
+    char *row = malloc(lines->length + 1);
+    size_t row_length = lines->length;
+    if (!row)
+        return err_memory(err, "a row");
+    memcpy(row, lines->line, row_length);
+    lines->length = lines->assumed.length - skip;
+    memcpy(lines->line, lines->assumed.text + skip, lines->length);
+    bool good = split(lines, ',');
+    int failed = good ? begin(lines, false, err) : ERR_OK;
+    lines->length = row_length;
+    memcpy(lines->line, row, row_length);
+    free(row);
+    lines->delimiter = delimiter;
+    return failed || !good ? failed : another_line(lines, err);
+}
+
+static int first_line(struct line_stream *lines, struct err *err)
+{
+    int64_t own_ns;
+    lines->delimiter = find_delimiter(lines);
+    if (!split(lines, lines->delimiter)) {
+        garbled(lines, "not a line of numbers");
+        return ERR_OK;
+    }
+    if (looks_like_header(lines))
+        return begin(lines, false, err);
+    lines->time_scale = 1e9;
+    /* Half a row may look like a whole one without its time: two of the same width must come. */
+    size_t before = lines->assumed_width;
+    lines->assumed_width = fits_assumed(lines) ? lines->field_count : 0;
+    if (lines->assumed_width > 0 && lines->assumed_width == before)
+        return begin_assumed(lines, err);
+    if (lines->rate_hz <= 0 || !all_numbers(lines, 0)) {
+        garbled(lines, "no header yet");
+        return ERR_OK;
+    }
+    int failed = begin(lines, true, err);
+    if (!failed && read_row(lines, &own_ns))
+        failed = put_row(lines, own_ns, err);
+    return failed;
+}
+
 static int end_line(struct line_stream *lines, struct err *err)
 {
     size_t start = 0;
@@ -384,7 +460,7 @@ static int end_line(struct line_stream *lines, struct err *err)
         complain(lines->complaints, 1, "a line longer than %d bytes", LINE_MOST);
     else if (memchr(lines->line, '\0', lines->length))
         garbled(lines, "zero bytes");
-    else if (strspn(lines->length ? lines->line : "", " \t") < lines->length || lines->length > 0)
+    else if (lines->length > 0)
         failed = lines->has_header ? another_line(lines, err) : first_line(lines, err);
     lines->length = 0;
     lines->too_long = false;

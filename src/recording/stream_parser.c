@@ -55,6 +55,12 @@ void stream_parser_free(struct stream_parser *parser)
     free(parser);
 }
 
+int stream_parser_assume(struct stream_parser *parser, const char *const *headers, size_t count,
+                         double rate_hz, struct err *err)
+{
+    return line_stream_assume(parser->lines, headers, count, rate_hz, err);
+}
+
 static int feed(struct stream_parser *parser, const uint8_t *bytes, size_t count, struct err *err)
 {
     return parser->mode == MODE_LINES

@@ -58,6 +58,12 @@ MUST_CHECK int stream_parser_new(double rate_hz, const struct stream_sink *sink,
                                  struct stream_parser **out, struct err *err);
 void stream_parser_free(struct stream_parser *parser);
 
+/* Lines that begin without a header, from a device that sends one only when it is switched on, have
+ * the channels `headers` ("ECG II [mV]", as in a header; shape (count)) when their first row has as
+ * many numbers, then at rate_hz, or one more: the time, first. */
+MUST_CHECK int stream_parser_assume(struct stream_parser *parser, const char *const *headers,
+                                    size_t count, double rate_hz, struct err *err);
+
 /* Fails only when memory runs out or the sink fails. */
 MUST_CHECK int stream_parser_feed(struct stream_parser *parser, const void *bytes, size_t count,
                                   struct err *err);

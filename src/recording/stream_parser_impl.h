@@ -27,6 +27,9 @@ MUST_CHECK int line_stream_new(double rate_hz, const struct stream_sink *sink,
                                struct complaints *complaints, struct line_stream **out,
                                struct err *err);
 void line_stream_free(struct line_stream *lines);
+/* As stream_parser_assume(). */
+MUST_CHECK int line_stream_assume(struct line_stream *lines, const char *const *headers,
+                                  size_t count, double rate_hz, struct err *err);
 MUST_CHECK int line_stream_feed(struct line_stream *lines, const char *bytes, size_t count,
                                 struct err *err);
 /* Half a line is dropped; channels stay as they are. */

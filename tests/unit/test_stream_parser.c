@@ -251,6 +251,29 @@ Test(stream_parser, a_broken_connection_goes_on_in_the_middle)
     str_free(&heard.text);
 }
 
+/* A device that sends its header only when it is switched on, joined in the middle. */
+Test(stream_parser, a_header_that_is_known_from_before_is_assumed)
+{
+    static const char *const known[] = {"ECG II [mV]", "a, \"b\" [1]"};
+    static const char *const rows[] = {"8,1\n0,0,0\n0.1,1,2\n0.2,3,4\n0.3,5,6\n0.4,7,8\n0.5,9,10\n",
+                                       "4;1\n5;1,5\n6;2,5\n"};
+    struct err err = {0};
+    for (int i = 0; i < 2; i++) {
+        struct heard heard = {0};
+        struct stream_parser *parser = parser_on(&heard, 0);
+        cr_assert_eq(stream_parser_assume(parser, known, 2, 250, &err), 0, "%s", err.text);
+        feed(parser, rows[i], strlen(rows[i]));
+        cr_expect_eq(heard.headers, 1);
+        cr_expect(strstr(str_text(&heard.text), " ECG II[mV]ecg"), "%s", str_text(&heard.text));
+        cr_expect(strstr(str_text(&heard.text), " a, \"b\"[1]"), "%s", str_text(&heard.text));
+        cr_expect_eq(heard.rows, i == 0 ? 10 : 250);
+        cr_expect_eq(heard.blocks, i == 0 ? 5 : 2);
+        cr_expect_float_eq(heard.last[1], i == 0 ? 10 : 2.5, 0);
+        stream_parser_free(parser);
+        str_free(&heard.text);
+    }
+}
+
 /* ---- records ---- */
 
 static char folder[] = "/tmp/incisura-parser-XXXXXX";
