@@ -4,7 +4,8 @@
 CREATE TABLE sessions (
     id                       INTEGER PRIMARY KEY,
     uid                      TEXT NOT NULL UNIQUE,  -- random
-    host                     TEXT NOT NULL,
+    host                     TEXT NOT NULL,  -- its name, for people
+    machine                  TEXT NOT NULL,  -- which stays when the name changes
     boot_id                  TEXT NOT NULL,
     pid                      INTEGER NOT NULL,
     process_start            INTEGER NOT NULL,  -- clock ticks since boot: with pid, one process

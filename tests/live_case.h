@@ -51,6 +51,7 @@ static inline struct live_session live_session_here(void)
                                 .ended_utc_ns = NS_NONE};
     random_id(made.uid);
     host_name(made.host);
+    machine_id(made.machine);
     boot_id(made.boot_id);
     made.process_start = process_start_ticks(made.pid);
     return made;

@@ -9,6 +9,7 @@
 #include <time.h>
 #include <unistd.h>
 
+#include "base/file.h"
 #include "base/ns.h"
 
 int64_t boottime_now_ns(void)
@@ -43,6 +44,17 @@ void host_name(char out[HOST_SIZE])
     out[HOST_SIZE - 1] = '\0';
 }
 
+void machine_id(char out[MACHINE_ID_SIZE])
+{
+    char name[HOST_SIZE], text[DIGEST_TEXT_SIZE];
+    uint8_t digest[DIGEST_SIZE];
+    if (!first_line("/etc/machine-id", name, sizeof name) || !*name)
+        host_name(name);
+    digest_bytes(name, strlen(name), digest);
+    digest_text(digest, text);
+    (void)snprintf(out, MACHINE_ID_SIZE, "%.16s", text);
+}
+
 /* /proc/PID/stat: "pid (name) state ...", the start time is the 20th field after the name, which
  * may hold blanks and parentheses itself. */
 int64_t process_start_ticks(int64_t pid)
@@ -54,6 +66,8 @@ int64_t process_start_ticks(int64_t pid)
     if (!first_line(path, line, sizeof line))
         return 0;
     const char *at = strrchr(line, ')');
+    if (at && at[1] && strchr("ZX", at[2]))
+        return 0;
     for (int field = 0; at && field < FIELDS_AFTER_NAME; field++)
         at = strchr(at + 1, ' ');
     return at && sscanf(at, "%lld", &ticks) == 1 ? ticks : 0;

@@ -13,7 +13,7 @@
 
 #include "base/err.h"
 
-enum { BOOT_ID_SIZE = 40, HOST_SIZE = 72, RANDOM_ID_SIZE = 33 };
+enum { BOOT_ID_SIZE = 40, HOST_SIZE = 72, MACHINE_ID_SIZE = 17, RANDOM_ID_SIZE = 33 };
 
 int64_t boottime_now_ns(void);
 
@@ -21,8 +21,13 @@ int64_t boottime_now_ns(void);
 void boot_id(char out[BOOT_ID_SIZE]);
 void host_name(char out[HOST_SIZE]);
 
+/* 16 digits that stay when the machine gets another name or is started again: a digest of what the
+ * system keeps for that (/etc/machine-id, which is not for showing around), else of its name. */
+void machine_id(char out[MACHINE_ID_SIZE]);
+
 /* When a process was started, in clock ticks since boot: with the process id, no other process of
- * this boot has the same. 0 when there is no such process. */
+ * this boot has the same. 0 when there is no such process, or nothing left of it but its end, not
+ * yet asked for. */
 int64_t process_start_ticks(int64_t pid);
 
 /* 128 random bits as 32 hexadecimal digits. */

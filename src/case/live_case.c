@@ -46,6 +46,7 @@ int live_case_session(struct casefile *casefile, const char *rater, struct live_
         return failed;
     random_id(made.uid);
     host_name(made.host);
+    machine_id(made.machine);
     boot_id(made.boot_id);
     made.process_start = process_start_ticks(made.pid);
     (void)snprintf(made.rater, sizeof made.rater, "%s", rater);

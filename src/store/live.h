@@ -17,7 +17,7 @@
 
 struct live_session {
     char uid[RANDOM_ID_SIZE];
-    char host[HOST_SIZE], boot_id[BOOT_ID_SIZE];
+    char host[HOST_SIZE], machine[MACHINE_ID_SIZE], boot_id[BOOT_ID_SIZE];
     int64_t pid, process_start;
     char rater[64];
     int64_t begun_utc_ns;

@@ -47,6 +47,7 @@ static bool take_head(struct taking *taking, const json_t *json)
         return false;
     copy_word(from, "uid", to->uid, sizeof to->uid);
     copy_word(from, "host", to->host, sizeof to->host);
+    copy_word(from, "machine", to->machine, sizeof to->machine);
     copy_word(from, "boot_id", to->boot_id, sizeof to->boot_id);
     copy_word(from, "rater", to->rater, sizeof to->rater);
     to->pid = json_number(from, "pid");

@@ -11,28 +11,28 @@
 
 #define SESSION_COLUMNS                                                 \
     "id, uid, host, boot_id, pid, process_start, rater, begun_utc_ns, " \
-    "case_minus_boottime_ns, tie_error_ns, ended_utc_ns"
+    "case_minus_boottime_ns, tie_error_ns, ended_utc_ns, machine"
 
 json_t *session_to_json(const struct live_session *session)
 {
-    return json_pack("{s:s, s:s, s:s, s:I, s:I, s:s, s:I, s:I, s:I, s:o}", "uid", session->uid,
-                     "host", session->host, "boot_id", session->boot_id, "pid",
-                     (json_int_t)session->pid, "process_start", (json_int_t)session->process_start,
-                     "rater", session->rater, "begun_utc_ns", (json_int_t)session->begun_utc_ns,
-                     "case_minus_boottime_ns", (json_int_t)session->case_minus_boottime_ns,
-                     "tie_error_ns", (json_int_t)session->tie_error_ns, "ended_utc_ns",
-                     session->ended_utc_ns == NS_NONE ? json_null()
-                                                      : json_integer(session->ended_utc_ns));
+    return json_pack(
+        "{s:s, s:s, s:s, s:s, s:I, s:I, s:s, s:I, s:I, s:I, s:o}", "uid", session->uid, "host",
+        session->host, "machine", session->machine, "boot_id", session->boot_id, "pid",
+        (json_int_t)session->pid, "process_start", (json_int_t)session->process_start, "rater",
+        session->rater, "begun_utc_ns", (json_int_t)session->begun_utc_ns, "case_minus_boottime_ns",
+        (json_int_t)session->case_minus_boottime_ns, "tie_error_ns",
+        (json_int_t)session->tie_error_ns, "ended_utc_ns",
+        session->ended_utc_ns == NS_NONE ? json_null() : json_integer(session->ended_utc_ns));
 }
 
 bool live_session_alive(const struct live_session *session)
 {
-    char host[HOST_SIZE], boot[BOOT_ID_SIZE];
-    host_name(host);
+    char machine[MACHINE_ID_SIZE], boot[BOOT_ID_SIZE];
+    machine_id(machine);
     boot_id(boot);
     if (session->ended_utc_ns != NS_NONE)
         return false;
-    if (strcmp(session->host, host) != 0)
+    if (strcmp(session->machine, machine) != 0)
         return true;
     return strcmp(session->boot_id, boot) == 0 &&
            process_start_ticks(session->pid) == session->process_start;
@@ -59,6 +59,7 @@ static struct live_session take_session(sqlite3_stmt *statement)
     take_text(statement, 2, out.host, sizeof out.host);
     take_text(statement, 3, out.boot_id, sizeof out.boot_id);
     take_text(statement, 6, out.rater, sizeof out.rater);
+    take_text(statement, 11, out.machine, sizeof out.machine);
     return out;
 }
 
@@ -173,13 +174,13 @@ int store_session_end(struct store *store, const char *uid, struct err *err)
 
 static int refuse_running(struct store *store, const struct live_session *running, struct err *err)
 {
-    char when[TIME_TEXT_SIZE], host[HOST_SIZE];
-    host_name(host);
+    char when[TIME_TEXT_SIZE], machine[MACHINE_ID_SIZE];
+    machine_id(machine);
     time_t seconds = (time_t)(running->begun_utc_ns / NS_PER_S);
     struct tm local;
     if (!localtime_r(&seconds, &local) || !strftime(when, sizeof when, "%Y-%m-%d %H:%M:%S", &local))
         (void)snprintf(when, sizeof when, "earlier");
-    bool here = strcmp(running->host, host) == 0;
+    bool here = strcmp(running->machine, machine) == 0;
     return err_set(err, ERR_CONFLICT,
                    "%s: a live session of %s runs already, since %s on %s (process %lld); %s",
                    store->path, *running->rater ? running->rater : "somebody", when, running->host,
@@ -210,8 +211,8 @@ static int insert_session(struct store *store, const struct live_session *sessio
     sqlite3_stmt *statement;
     int failed = sql_prepare(store,
                              "INSERT INTO sessions (uid, host, boot_id, pid, process_start, rater, "
-                             "begun_utc_ns, case_minus_boottime_ns, tie_error_ns) "
-                             "VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?)",
+                             "begun_utc_ns, case_minus_boottime_ns, tie_error_ns, machine) "
+                             "VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
                              &statement, err);
     if (failed)
         return failed;
@@ -224,6 +225,7 @@ static int insert_session(struct store *store, const struct live_session *sessio
     (void)sqlite3_bind_int64(statement, 7, session->begun_utc_ns);
     (void)sqlite3_bind_int64(statement, 8, session->case_minus_boottime_ns);
     (void)sqlite3_bind_int64(statement, 9, session->tie_error_ns);
+    (void)sqlite3_bind_text(statement, 10, session->machine, -1, SQLITE_STATIC);
     return sql_finish(store, statement, err);
 }
 

@@ -65,6 +65,7 @@ static int bench_saver(const char *path, int64_t *ns, struct err *err)
     session.ended_utc_ns = NS_NONE;
     random_id(session.uid);
     host_name(session.host);
+    machine_id(session.machine);
     boot_id(session.boot_id);
     session.process_start = process_start_ticks(session.pid);
     (void)unlink(path);

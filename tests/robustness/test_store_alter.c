@@ -48,6 +48,7 @@ static void set_up(void)
     cr_assert_eq(store_recording_add(store, &recording, &id, &err), 0);
     struct live_session session = {.uid = "u",
                                    .host = "elsewhere",
+                                   .machine = "m",
                                    .boot_id = "b",
                                    .rater = "KM",
                                    .epoch_civil_ns = 5,
@@ -147,7 +148,7 @@ Test(store_alter, every_alteration_is_named)
         {"UPDATE sessions SET case_minus_boottime_ns = 1", "session 1: case_minus_boottime_ns", 0},
         {"UPDATE sessions SET ended_utc_ns = 1", "session 1: ended_utc_ns", 0},
         {"DELETE FROM sessions", "session 1 is in the history and not in the case", 0},
-        {"INSERT INTO sessions SELECT 2, 'v', host, boot_id, pid, process_start, rater, "
+        {"INSERT INTO sessions SELECT 2, 'v', host, machine, boot_id, pid, process_start, rater, "
          "begun_utc_ns, case_minus_boottime_ns, tie_error_ns, 1 FROM sessions",
          "session 2 is not in the history", 0},
         {"UPDATE clocks SET clock = '[[0,1,3,1,0]]'", "clock of recording 2: clock", 0},

@@ -52,6 +52,7 @@ Test(live_store, another_machines_session_needs_a_word)
     struct err err = {0};
     struct live_session there = live_session_here(), here = live_session_here();
     (void)strcpy(there.host, "elsewhere");
+    (void)strcpy(there.machine, "other");
     cr_assert_eq(store_session_begin(store, &there, false, &err), 0);
     cr_assert_eq(store_session_begin(store, &here, false, &err), ERR_CONFLICT);
     cr_expect(strstr(err.text, "elsewhere") && strstr(err.text, "--take-over"), "%s", err.text);
