@@ -4,6 +4,7 @@
  */
 #include "case/live_case.h"
 
+#include <dirent.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
@@ -215,12 +216,62 @@ int live_case_adopt(struct store *store, int64_t most_bytes, int64_t *attached, 
     return failed;
 }
 
+/* Is `path` the file of a recording, or of a stream that has not become one yet? */
+static bool known(const char *path, const struct stored_recording *recordings,
+                  size_t recording_count, const struct stored_stream *streams, size_t stream_count)
+{
+    const char *name = path_name(path);
+    for (size_t i = 0; i < recording_count; i++) {
+        if (strcmp(path_name(recordings[i].path), name) == 0)
+            return true;
+    }
+    for (size_t i = 0; i < stream_count; i++) {
+        if (strcmp(path_name(streams[i].path), name) == 0)
+            return true;
+    }
+    return false;
+}
+
+static int count_strays(struct store *store, int64_t *out, struct err *err)
+{
+    struct arena arena = {0};
+    const struct stored_recording *recordings = NULL;
+    struct stored_stream *streams = NULL;
+    size_t recording_count = 0, stream_count = 0, stem = strlen(path_name(store_path(store)));
+    char *folder = path_beside(store_path(store), ".");
+    if (path_has_suffix(store_path(store), ".case"))
+        stem -= strlen(".case");
+    int failed = folder ? store_recordings(store, &recordings, &recording_count, err)
+                        : err_memory(err, "a folder");
+    if (!failed)
+        failed = store_streams(store, &arena, &streams, &stream_count, err);
+    DIR *listing = failed ? NULL : opendir(folder);
+    for (struct dirent *entry; listing && (entry = readdir(listing));) {
+        const char *name = entry->d_name;
+        bool ours = strncmp(name, path_name(store_path(store)), stem) == 0 &&
+                    strncmp(name + stem, "-live-", 6) == 0 && path_has_suffix(name, ".bdf");
+        *out += ours && !known(name, recordings, recording_count, streams, stream_count);
+    }
+    if (listing)
+        (void)closedir(listing);
+    free(folder);
+    arena_free(&arena);
+    return failed;
+}
+
 int live_case_settle(struct store *store, int64_t most_bytes, struct settled *out, struct err *err)
 {
     struct err first = {0};
     int failed = second_place_take(store, &out->changes, &out->damaged, &first);
     /* One that fails is no reason to leave the other undone. */
     int also = live_case_adopt(store, most_bytes, &out->recordings, failed ? NULL : &first);
+    struct live_session last;
+    bool any = false;
+    /* One that runs may be about to note its file. */
+    if (!failed && !also)
+        failed = store_session_last(store, &last, &any, &first);
+    if (!failed && !also && !(any && live_session_alive(&last)))
+        failed = count_strays(store, &out->strays, &first);
     if (failed || also)
         return err_set(err, failed ? failed : also, "%s", first.text);
     return ERR_OK;

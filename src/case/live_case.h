@@ -38,9 +38,12 @@ MUST_CHECK int live_case_adopt(struct store *store, int64_t most_bytes, int64_t 
 struct settled {
     int64_t changes, damaged; /* from the second place: brought in, not readable */
     int64_t recordings;       /* streams that became recordings */
+    int64_t strays; /* files by the name of a stream of this case that it does not know: written in
+                       the moment before a kill, or while the case could not be */
 };
 
-/* Both: what lies in the second place, and live_case_adopt(). */
+/* What lies in the second place, live_case_adopt(), and a look for strays, which are not touched:
+ * only a person can say whose they are. */
 MUST_CHECK int live_case_settle(struct store *store, int64_t most_bytes, struct settled *out,
                                 struct err *err);
 

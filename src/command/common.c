@@ -94,6 +94,13 @@ static void settle(const struct arguments *arguments, const char *path, int64_t 
         (void)fprintf(stderr,
                       "incisura %s: note: attached what streamed in before: %lld recording%s\n",
                       command, (long long)settled.recordings, settled.recordings == 1 ? "" : "s");
+    if (settled.strays > 0)
+        (void)fprintf(
+            stderr,
+            "incisura %s: note: %lld file%s named like a stream of this case %s not in it; "
+            "`incisura inspect` tells what is in there, `attach` adds it\n",
+            command, (long long)settled.strays, settled.strays == 1 ? "" : "s",
+            settled.strays == 1 ? "is" : "are");
     store_close(store);
 }
 

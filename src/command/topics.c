@@ -48,12 +48,11 @@ static void print_sources(FILE *to)
         "           --rate HZ; an empty cell or NaN is a missing sample\n"
         "  records  an EDF, EDF+, BDF or BDF+ file from its first byte on, header first, the\n"
         "           number of records not known (-1)\n"
-        "What comes is written as it comes, as CASE-live-1.bdf and so on beside the case: valid\n"
-        "after any crash, flushed every two seconds. A lost connection is a gap, and is tried\n"
-        "again; another header begins another file. A device that sends its header only when\n"
-        "it is switched on is understood after a restart, too. The device's clock is fitted to "
-        "the\n"
-        "laptop's while it runs. On leaving, the files are attached to the case.\n",
+        "What comes is written as it comes, as CASE-live-1.bdf and so on beside the case:\n"
+        "valid after any crash, flushed every two seconds. A lost connection is a gap, and is\n"
+        "tried again; another header begins another file. A device that sends its header only\n"
+        "when it is switched on is understood after a restart, too. The device's clock is\n"
+        "fitted to the laptop's while it runs. On leaving, the files are attached to the case.\n",
         to);
 }
 

@@ -217,6 +217,17 @@ db.commit()
 db.close()
 refused("somebody else's database", "other.case", "marks", "other.case")
 
+# files that a session was killed over before the case knew of them are told, and left alone
+done("a case for strays", "start", "stray", "--subject", "S", "--rater", "KM")
+for name in ("stray-live-3.bdf", "strayed-live-1.bdf", "stray-live-3.txt"):
+    open(name, "w").close()
+r = run("mark", "stray", "incision", "--at", "+1")
+ok(r.returncode == 0 and "note: 1 file named like a stream" in r.stderr
+   and os.path.exists("stray-live-3.bdf"), "a stray file of a stream is told", r.stderr)
+
+# what `live` cannot take
+refused("live without a terminal", "needs a terminal", "live", "stray")
+
 with open("/dev/full", "w") as full:
     r = subprocess.run([INCISURA, "derive", "wave.csv", "channel", "--channel", "EDA"],
                        stdout=full, stderr=subprocess.PIPE, text=True)
