@@ -55,6 +55,10 @@ static char plain(uint32_t glyph)
         return 'x';
     case 0x2026:
         return '~';
+    case 0x2580: /* halves, of large digits */
+        return '"';
+    case 0x2584:
+        return '_';
     default:
         return glyph >= 0x2581 && glyph <= 0x2591 ? '#' : '?';
     }

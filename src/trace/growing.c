@@ -60,7 +60,7 @@ struct growing {
 static struct extremes *block_of(const struct level *level, int64_t index)
 {
     int chunk = 63 - __builtin_clzll((unsigned long long)(index / FIRST_BLOCKS + 1));
-    int64_t before = (int64_t)FIRST_BLOCKS * ((1LL << chunk) - 1);
+    int64_t before = (int64_t)FIRST_BLOCKS * ((INT64_C(1) << chunk) - 1);
     return &level->chunks[chunk][index - before];
 }
 
