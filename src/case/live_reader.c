@@ -106,6 +106,7 @@ static void lose(struct reader_thread *reader)
     struct err err = {0};
     source_close(reader->source);
     stream_parser_break(reader->parser);
+    reader->stream->intake.garbled_by_parser = stream_parser_garbled(reader->parser);
     if (live_intake_break(&reader->stream->intake, &err))
         tell(reader, LIVE_LOST, err.text);
 }

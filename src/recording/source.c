@@ -38,18 +38,25 @@ static int name_serial(struct source *source, const char *rest, struct err *err)
     return source->name ? ERR_OK : err_memory(err, source->text);
 }
 
+/* From 1 to 65535, of digits alone: the system is given the text. */
+static bool is_port(const char *text)
+{
+    int64_t port = 0;
+    return strspn(text, "0123456789") == strlen(text) && integer_parse(text, &port) && port >= 1 &&
+           port <= 65535;
+}
+
 /* HOST:PORT, [HOST]:PORT where the host has colons itself. */
 static int name_tcp(struct source *source, const char *rest, struct err *err)
 {
     const char *colon = strrchr(rest, ':');
-    int64_t port = 0;
-    if (!colon || colon == rest || !integer_parse(colon + 1, &port) || port < 1 || port > 65535)
+    if (!colon || colon == rest || !is_port(colon + 1))
         return refuse(source->text, "a TCP source needs a host and a port from 1 to 65535", err);
     size_t length = (size_t)(colon - rest);
     if (rest[0] == '[' && length > 2 && rest[length - 1] == ']') {
         rest++;
         length -= 2;
-    } else if (memchr(rest, ':', length)) {
+    } else if (memchr(rest, ':', length) || rest[0] == '[') {
         return refuse(source->text, "a host with colons goes in brackets: tcp:[::1]:4000", err);
     }
     source->name = strndup(rest, length);
@@ -119,6 +126,7 @@ void source_close(struct source *source)
         (void)close(source->fd);
     source->fd = -1;
     source->met_writer = false;
+    source->more = false;
     source->at = 0;
     source_forget_addresses(source);
 }
@@ -135,6 +143,7 @@ static int read_file(struct source *source, void *buffer, size_t room, size_t *c
         return err_errno(err, source->text, "read");
     *count = (size_t)got;
     source->at += got;
+    source->more = (size_t)got == room;
     *answer = got > 0 ? SOURCE_BYTES : SOURCE_NOTHING;
     if (got > 0)
         return ERR_OK;
@@ -187,7 +196,9 @@ int source_wait(struct source *source, int wake_fd, int timeout_ms, struct err *
     bool file = source->kind == SOURCE_FILE || source->fd < 0;
     /* A FIFO without a writer is ready for ever once there was one; without, poll waits. */
     struct pollfd waiting[] = {{file ? -1 : source->fd, POLLIN, 0}, {wake_fd, POLLIN, 0}};
-    if (file && (timeout_ms < 0 || timeout_ms > LOOK_AGAIN_MS))
+    if (source->more)
+        timeout_ms = 0;
+    else if (file && (timeout_ms < 0 || timeout_ms > LOOK_AGAIN_MS))
         timeout_ms = LOOK_AGAIN_MS;
     if (poll(waiting, 2, timeout_ms) < 0 && errno != EINTR)
         return err_errno(err, source->text, "wait for");

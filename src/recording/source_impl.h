@@ -23,6 +23,7 @@ struct source {
     dev_t device;    /* growing file: which one is open, and how far it is read */
     ino_t inode;
     off_t at;
+    bool more; /* the last read of it gave all that there was room for */
     struct addrinfo *addresses, *next_address; /* TCP: of the name; still to be tried */
 };
 
