@@ -132,6 +132,7 @@ demo: packages
 	@demo/open
 
 demo-programs: build build/theatre
+	@:
 
 demo-live: packages
 	@$(MAKE) -j$$(nproc) demo-programs
