@@ -6,7 +6,7 @@
 #include "base/str.h"
 #include "terminal/live_impl.h"
 
-enum { KEY_COLUMNS = 10, ENTRY_COLUMNS = 62 };
+enum { KEY_COLUMNS = 10, ENTRY_COLUMNS = 80 };
 
 static const struct {
     const char *key, *text;
@@ -44,6 +44,7 @@ void live_draw_help(const struct live *live, struct canvas *canvas)
     size_t count = tools + codebook_count(live->codebook);
     int rows = canvas->rows > 2 ? canvas->rows - 2 : 1;
     int across = canvas->columns / ENTRY_COLUMNS > 0 ? canvas->columns / ENTRY_COLUMNS : 1;
+    int wide = canvas->columns / across;
     size_t page_size = (size_t)(rows * across), pages = (count + page_size - 1) / page_size;
     size_t page = (size_t)live->help_page % pages;
     canvas_fill(canvas, 0, 0, 1, canvas->columns, ' ', INK_BAR);
@@ -52,10 +53,10 @@ void live_draw_help(const struct live *live, struct canvas *canvas)
                         page + 1, pages);
     for (size_t i = page * page_size; i < count && i < (page + 1) * page_size; i++) {
         int place = (int)(i - page * page_size), row = 1 + place % rows;
-        int column = 1 + place / rows * ENTRY_COLUMNS, end = column + ENTRY_COLUMNS - 1;
+        int column = 1 + place / rows * wide, end = column + wide - 1;
         if (i < tools) {
             (void)canvas_text(canvas, row, column, end, INK_MARK, tool_keys[i].key);
-            (void)canvas_text(canvas, row, column + KEY_COLUMNS + 1, end + 10, INK_TEXT,
+            (void)canvas_text(canvas, row, column + KEY_COLUMNS + 1, end, INK_TEXT,
                               tool_keys[i].text);
             continue;
         }

@@ -155,8 +155,8 @@ static void draw_hint(const struct live *live, struct canvas *canvas)
         return;
     const char *hint = live->prompt.open
                            ? "Enter keep   Esc later   Tab then a letter: the next event at once"
-                           : "12 then letter: 12 s ago   Enter note   Bksp take back   . complete  "
-                             " ^T sync   ? keys";
+                           : "? keys  12 letter: 12 s ago  Enter note  Bksp take back  . complete  "
+                             "^T sync";
     (void)canvas_text(canvas, part->row, 1, part->columns, INK_DIM, hint);
 }
 

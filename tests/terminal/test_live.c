@@ -194,8 +194,14 @@ static void notes_and_clocks(void)
     screen_control(screen, 'u');
     screen_type(screen, "14:05:02 monitor\r");
     screen_check(screen, screen_shows(screen, "3 marks   SAVED"), "a time is kept");
+    screen_check(screen, screen_shows(screen, "? keys") && screen_shows(screen, "^T sync"),
+                 "the hint is whole at 80 columns");
     screen_type(screen, "?");
     screen_check(screen, screen_shows(screen, "Space next page"), "help opens");
+    screen_check(screen,
+                 screen_shows(screen, "then closes it") &&
+                     screen_shows(screen, "the device's screen showed"),
+                 "its lines are whole at 80 columns");
     screen_type(screen, " ");
     screen_check(screen, screen_shows(screen, "page 2 of"), "and has pages");
     screen_type(screen, "?");
