@@ -197,7 +197,8 @@ static int draw_mark_what(const struct review *review, struct canvas *canvas, si
         at = canvas_text(canvas, row, at + 1, end, INK_WARN, "still open");
     }
     if (mark->error_ns > 0)
-        at = canvas_printf(canvas, row, at + 1, end, INK_DIM, "\u00b1%.2g s",
+        at = canvas_printf(canvas, row, at + 1, end, INK_DIM,
+                           mark->error_ns < 10 * NS_PER_S ? "\u00b1%.2g s" : "\u00b1%.0f s",
                            s_from_ns(mark->error_ns));
     return at;
 }

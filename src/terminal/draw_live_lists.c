@@ -126,10 +126,15 @@ static void draw_mark(const struct live *live, struct canvas *canvas,
     if (*value)
         at = canvas_text(canvas, row, at + 1, right - 1, INK_STRONG, value);
     if (mark->mark.error_ns > 0)
-        at = canvas_printf(canvas, row, at + 1, right - 1, INK_DIM, "\u00b1%.2g s",
+        at = canvas_printf(canvas, row, at + 1, right - 1, INK_DIM,
+                           mark->mark.error_ns < 10 * NS_PER_S ? "\u00b1%.2g s" : "\u00b1%.0f s",
                            s_from_ns(mark->mark.error_ns));
     if (mark->mark.until_ns != NS_NONE) {
-        live_age_text(mark->mark.until_ns - mark->mark.onset_ns, clock);
+        int64_t span_ns = mark->mark.until_ns - mark->mark.onset_ns;
+        if (span_ns < 10 * NS_PER_S) /* cautery is often over within one */
+            (void)snprintf(clock, sizeof clock, "%.1f s", s_from_ns(span_ns));
+        else
+            live_age_text(span_ns, clock);
         at = canvas_printf(canvas, row, at + 1, right - 1, INK_DIM, "for %s", clock);
     }
     if (*mark->mark.note)
