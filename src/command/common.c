@@ -20,12 +20,15 @@ int command_fail(const struct arguments *arguments, const struct err *err)
     return EXIT_FAILED;
 }
 
+static const double rate_least_hz = 0.001, rate_most_hz = 1e6;
+
 int command_reader_options(const struct arguments *arguments, struct reader_options *out,
                            struct err *err)
 {
     struct reader_options made = {0};
     const char *rate = argument(arguments, "rate");
-    if (rate && (!number_parse(rate, &made.rate_hz) || made.rate_hz <= 0))
+    if (rate && (!number_parse(rate, &made.rate_hz) ||
+                 !(made.rate_hz >= rate_least_hz && made.rate_hz <= rate_most_hz)))
         return err_set(err, ERR_USAGE, "--rate '%s' is not a number of samples a second", rate);
     const char *start = argument(arguments, "start");
     struct time_arg time;
