@@ -100,6 +100,7 @@ ok(run("help", "--man").stdout.startswith(".TH INCISURA 1"), "man page")
 # --- a recording that does not say when it starts
 open("plain.csv", "w").write("lead\n" + "".join(f"{k % 7}\n" for k in range(1000)))
 done("start of a case without a clock", "start", "p.case", "--rater", "KM")
+refused("a rate beyond reason", "--rate", "attach", "p", "plain.csv", "--rate", "1e99")
 refused("a start that is no date", "--start", "attach", "p", "plain.csv", "--rate", "100", "--start", "9")
 refused("a start for a file that says its own", "says itself", "attach", "p", "wave.csv", "--start",
         "2031-05-20T09:00:00")
