@@ -57,7 +57,8 @@ static int begin_session(const struct arguments *arguments, struct at_work *work
     const char *rater = argument(arguments, "rater");
     struct err why = {0};
     work->store = casefile_store(work->casefile);
-    int failed = live_case_session(work->casefile, rater ? rater : store_header(work->store)->rater,
+    int failed = live_case_session(work->casefile,
+                                   rater && *rater ? rater : store_header(work->store)->rater,
                                    &work->session, work->remark, sizeof work->remark, err);
     if (failed)
         return failed;
