@@ -188,8 +188,8 @@ static void attach_streams(const struct arguments *arguments, struct at_work *wo
     int failed = live_case_adopt(work->store, INT64_MAX, &attached, &err);
     also(arguments, failed, &err, status);
     if (attached > 0)
-        (void)fprintf(stderr, "%lld recording%s attached\n", (long long)attached,
-                      attached == 1 ? "" : "s");
+        (void)fprintf(stderr, "%lld recording%s attached; next: incisura review %s\n",
+                      (long long)attached, attached == 1 ? "" : "s", arguments->args[0]);
 }
 
 /* Everything is put away whatever went wrong: streams first, then marks, then what is left. */

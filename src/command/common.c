@@ -107,6 +107,22 @@ static void settle(const struct arguments *arguments, const char *path, int64_t 
     store_close(store);
 }
 
+/* Streams of sessions that were killed: attached by the next program that writes. */
+static size_t streams_waiting(struct store *store)
+{
+    struct arena arena = {0};
+    struct stored_stream *streams;
+    size_t count, waiting = 0;
+    if (store_streams(store, &arena, &streams, &count, NULL))
+        count = 0;
+    for (size_t i = 0; i < count; i++) {
+        bool runs;
+        waiting += store_session_runs(store, streams[i].session, &runs, NULL) == ERR_OK && !runs;
+    }
+    arena_free(&arena);
+    return waiting;
+}
+
 /* A program that only reads says what is missing. */
 static void tell_waiting(const struct arguments *arguments, struct store *store)
 {
@@ -117,6 +133,13 @@ static void tell_waiting(const struct arguments *arguments, struct store *store)
             "incisura %s: note: marks of %s wait in the second place; `incisura review` or "
             "`live` brings them in\n",
             arguments->command->name, store_path(store));
+    size_t streams = store ? streams_waiting(store) : 0;
+    if (streams > 0)
+        (void)fprintf(stderr,
+                      "incisura %s: note: %zu streamed recording%s of %s %s not attached yet; "
+                      "`incisura review` or `live` does it\n",
+                      arguments->command->name, streams, streams == 1 ? "" : "s", store_path(store),
+                      streams == 1 ? "is" : "are");
 }
 
 int command_open_live(const struct arguments *arguments, int64_t most_bytes, struct casefile **out,

@@ -104,6 +104,9 @@ def play(feeder):
         if number in KILLS:
             session.live.wait_saved(session.count)
             session.live.kill()
+            said = run("marks", case)
+            ok("not attached yet" in said.stderr, f"after kill {number}, reading says what waits",
+               said.stderr)
             session = Session(feeder, session.count)
         if number == FULL:
             filler = fill(session.live, session)
