@@ -70,42 +70,6 @@ int live_case_session(struct casefile *casefile, const char *rater, struct live_
 
 /* ---- streams ---- */
 
-static bool one_rate(const struct recording_info *info)
-{
-    for (size_t i = 0; i < info->channel_count; i++) {
-        if (info->channels[i].times_ns || info->channels[i].rate_hz != info->channels[0].rate_hz)
-            return false;
-    }
-    return info->channel_count > 0;
-}
-
-int live_case_channels(const struct casefile *casefile, const char *source, struct arena *arena,
-                       const char *const **headers, size_t *count, double *rate_hz, struct err *err)
-{
-    const struct recording_info *info = NULL;
-    for (size_t i = 0; i < casefile->loaded_count; i++) {
-        const struct loaded *loaded = casefile->loaded[i];
-        if (loaded->recording && strcmp(loaded->source, source) == 0)
-            info = loaded->attached.info;
-    }
-    *count = 0;
-    if (!info || !one_rate(info))
-        return ERR_OK;
-    const char **list = arena_alloc(arena, info->channel_count, sizeof *list);
-    bool good = list != NULL;
-    for (size_t i = 0; good && i < info->channel_count; i++) {
-        const struct channel *channel = &info->channels[i];
-        list[i] = arena_printf(arena, "%s [%s]", channel->label, channel->unit);
-        good = list[i] != NULL;
-    }
-    if (!good)
-        return err_memory(err, "the channels");
-    *headers = list;
-    *count = info->channel_count;
-    *rate_hz = info->channels[0].rate_hz;
-    return ERR_OK;
-}
-
 int live_case_keep(struct saver *saver, struct live_stream *stream, const char *source,
                    struct err *err)
 {

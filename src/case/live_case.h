@@ -17,13 +17,6 @@
 MUST_CHECK int live_case_session(struct casefile *casefile, const char *rater,
                                  struct live_session *out, char *tie, size_t size, struct err *err);
 
-/* What a source sent last, if that was lines: its channels as a header of lines has them ("ECG II
- * [mV]"), in `arena`, and their rate. *count = 0 when it is not known, or when its channels have
- * several rates: then it sent records, which bring their header. */
-MUST_CHECK int live_case_channels(const struct casefile *casefile, const char *source,
-                                  struct arena *arena, const char *const **headers, size_t *count,
-                                  double *rate_hz, struct err *err);
-
 /* Tells the saver which files a stream writes and how its clock runs, for the store to keep. */
 MUST_CHECK int live_case_keep(struct saver *saver, struct live_stream *stream, const char *source,
                               struct err *err);

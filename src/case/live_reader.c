@@ -157,14 +157,11 @@ static void reader_free(struct live_reader *base)
     free(reader);
 }
 
-static int start_reader(struct live_stream *stream, struct reader_thread *reader,
-                        const struct live_stream_config *config, struct err *err)
+static int start_reader(struct live_stream *stream, struct reader_thread *reader, double rate_hz,
+                        struct err *err)
 {
     struct stream_sink sink = live_intake_sink(&stream->intake);
-    int failed = stream_parser_new(config->rate_hz, &sink, &reader->parser, err);
-    if (!failed && config->assumed_count > 0)
-        failed = stream_parser_assume(reader->parser, config->assumed, config->assumed_count,
-                                      config->assumed_hz, err);
+    int failed = stream_parser_new(rate_hz, &sink, &reader->parser, err);
     if (failed)
         return failed;
     reader->stream = stream;
@@ -208,7 +205,7 @@ int live_stream_start(const struct live_stream_config *config, struct live_strea
     if (!failed)
         failed = live_stream_new(config, &stream, err);
     if (!failed)
-        failed = start_reader(stream, reader, config, err);
+        failed = start_reader(stream, reader, config->rate_hz, err);
     if (failed) {
         live_stream_free(stream);
         if (reader)

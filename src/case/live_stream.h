@@ -28,10 +28,6 @@ struct live_stream;
 struct live_stream_config {
     const char *source; /* "fifo:PATH", "serial:DEVICE@BAUD", "tcp:HOST:PORT", "-", or a file */
     double rate_hz;     /* of lines without a time column; 0 = they have one */
-    /* What lines without a header are, as the source said it before: stream_parser_assume(). */
-    const char *const *assumed; /* shape (assumed_count) */
-    size_t assumed_count;
-    double assumed_hz;
     const char *folder, *stem;
     const char *subject;             /* study code, for the file's header */
     int64_t case_minus_boottime_ns;  /* case time of an instant on CLOCK_BOOTTIME */

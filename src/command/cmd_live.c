@@ -107,10 +107,6 @@ static int start_streams(const struct arguments *arguments, struct at_work *work
         };
         if (work->session.epoch_civil_ns != NS_NONE)
             config.civil_minus_boottime_ns += work->session.epoch_civil_ns;
-        failed = live_case_channels(work->casefile, config.source, &work->arena, &config.assumed,
-                                    &config.assumed_count, &config.assumed_hz, err);
-        if (failed)
-            break;
         failed = live_stream_start(&config, &work->streams[work->stream_count], err);
         work->stream_count += !failed;
     }

@@ -50,9 +50,8 @@ static void print_sources(FILE *to)
         "           number of records not known (-1)\n"
         "What comes is written as it comes, as CASE-live-1.bdf and so on beside the case:\n"
         "valid after any crash, flushed every two seconds. A lost connection is a gap, and is\n"
-        "tried again; another header begins another file. A device that sends its header only\n"
-        "when it is switched on is understood after a restart, too. The device's clock is\n"
-        "fitted to the laptop's while it runs. On leaving, the files are attached to the case.\n",
+        "tried again; another header begins another file. The device's clock is fitted to the\n"
+        "laptop's while it runs. On leaving, the files are attached to the case.\n",
         to);
 }
 

@@ -68,51 +68,72 @@ static struct line_rate round_rate(double period_ns)
     return (struct line_rate){llround(period_ns), 1};
 }
 
-/* How finely the times are written: the largest power of ten, up to a second, that all are whole
- * multiples of. */
+/* The decimals that the times are printed with, as the unit of the last of them; a millisecond
+ * where whole seconds are. */
 static int64_t resolution_ns(const int64_t *times_ns, size_t count)
 {
-    int64_t quantum = NS_PER_S;
+    int64_t unit = NS_PER_MS;
     for (size_t i = 0; i < count; i++) {
-        while (times_ns[i] % quantum != 0)
-            quantum /= 10;
+        while (times_ns[i] % unit != 0)
+            unit /= 10;
     }
-    return quantum;
+    return unit;
 }
 
-/* Even steps of a few rows say the rate when steps are long, or written much finer than they are:
- * at 256 Hz in whole milliseconds the first six are 4 ms each. */
-static bool few_are_enough(const int64_t *times_ns, size_t count, double step_ns)
+/* How many rates that devices have are such that `steps` periods last span_ns, off by as much as
+ * off_ns. */
+static int usual_rates(double span_ns, double steps, double off_ns)
 {
-    int64_t span_ns = times_ns[count - 1] - times_ns[0];
-    return step_ns >= 1e8 || resolution_ns(times_ns, count) * 1000 <= span_ns;
+    int found = 0;
+    for (size_t i = 0; i < sizeof usual_mhz / sizeof *usual_mhz; i++)
+        found += fabs(steps * 1e12 / (double)usual_mhz[i] - span_ns) <= off_ns;
+    double seconds = round(span_ns / steps / NS_PER_S);
+    return found + (seconds > 1 && fabs(steps * seconds * NS_PER_S - span_ns) <= off_ns);
+}
+
+/* The slope of the least-squares line through the rows' times, with steps far from the middle one
+ * (a gap, a clock that was set) taken as the middle one: finer than the times' own resolution, and
+ * not led astray by the jitter of the first and last. */
+static double slope(const double *steps, size_t count, double middle)
+{
+    double at = 0, sum = 0, weights = 0;
+    for (size_t i = 0; i <= count; i++) {
+        double x = (double)i - (double)count / 2;
+        sum += x * at;
+        weights += x * x;
+        if (i < count)
+            at +=
+                middle > 0 && (steps[i] > 3 * middle || steps[i] < -2 * middle) ? middle : steps[i];
+    }
+    return sum / weights;
 }
 
 bool line_rate_of_times(const int64_t *times_ns, size_t count, bool final, struct line_rate *out)
 {
-    double steps[ROWS_MOST] = {0}, sorted[ROWS_MOST] = {0}, sum = 0;
-    size_t steps_count = 0, near = 0;
+    enum { PERIOD_LEAST_NS = 1000 };
+    double steps[ROWS_MOST], sorted[ROWS_MOST];
     bool even = true;
     count = count < ROWS_MOST ? count : ROWS_MOST;
-    for (size_t i = 1; i < count; i++)
-        steps[steps_count++] = (double)(times_ns[i] - times_ns[i - 1]);
-    if (steps_count == 0 || (count < ROWS_LEAST && !final))
+    if (count < 2 || (count < ROWS_LEAST && !final))
         return false;
+    size_t steps_count = count - 1;
     for (size_t i = 0; i < steps_count; i++)
-        sorted[i] = steps[i];
+        sorted[i] = steps[i] = (double)(times_ns[i + 1] - times_ns[i]);
     double middle = select_kth(sorted, steps_count, steps_count / 2);
-    if (!(middle > 0))
-        return false;
-    /* Gaps and steps back left out, the mean is finer than the times' own resolution. */
-    for (size_t i = 0; i < steps_count; i++) {
+    for (size_t i = 0; i < steps_count; i++)
         even = even && fabs(steps[i] - middle) <= 0.01 * middle;
-        if (steps[i] > 0 && steps[i] < 3 * middle) {
-            sum += steps[i];
-            near++;
-        }
+    if (!final && count < ROWS_MOST) {
+        /* Even steps may be the rounding of several rates; slow rows are not waited for. */
+        double span_ns = (double)(times_ns[count - 1] - times_ns[0]);
+        double off_ns = 1.01 * (double)resolution_ns(times_ns, count);
+        int rates = usual_rates(span_ns, (double)steps_count, off_ns + 1e-5 * span_ns);
+        if (!even || rates > 1 || (rates == 0 && span_ns < 5e9))
+            return false;
     }
-    if (!final && count < ROWS_MOST && !(even && few_are_enough(times_ns, count, middle)))
+    /* Rows come in bursts of one time when the middle step is 0: then all steps count. */
+    double period_ns = slope(steps, steps_count, middle);
+    if (!(period_ns >= PERIOD_LEAST_NS))
         return false;
-    *out = round_rate(sum / (double)near);
+    *out = round_rate(period_ns);
     return true;
 }

@@ -2,55 +2,15 @@
  * line_stream.c - lines of numbers as they stream in, taken apart by libcsv. Keeps one line, and
  * the first rows while their rate is not known.
  */
-#include <csv.h>
 #include <math.h>
-#include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 
 #include "base/array.h"
 #include "recording/csv_columns.h"
-#include "recording/stream_parser_impl.h"
+#include "recording/line_stream_impl.h"
 
-enum { LINE_MOST = 64 << 10, HELD_MOST = 64, NO_COLUMN = -1, SHOWN_MOST = 40 };
-
-struct line_stream {
-    struct stream_sink sink;
-    struct complaints *complaints;
-    double rate_hz;
-
-    char *line; /* LINE_MOST bytes */
-    size_t length;
-    bool too_long; /* the line is being skipped */
-
-    struct csv_parser csv;
-    char *fields; /* texts of the line's fields, each terminated; room for LINE_MOST * 2 */
-    size_t fields_used;
-    const char **field; /* shape (field_count) */
-    size_t field_count, field_room;
-    bool field_failed;
-
-    struct arena arena; /* of the header */
-    bool has_header;
-    char delimiter;
-    int time_column; /* NO_COLUMN: there is none */
-    double time_scale;
-    size_t width;
-    struct stream_channel *channels;
-    size_t channel_count;
-
-    struct str assumed; /* a header line for rows that come without one: "t,ECG [mV]"; "" = none */
-    size_t assumed_count;
-    size_t assumed_width; /* of the line before, when it could have been such a row */
-    double assumed_hz;
-
-    bool rate_known;
-    struct line_rate rate;
-    float *values;              /* of one row, shape (channel_count) */
-    float *held;                /* rows before the rate is known, shape (HELD_MOST, channels) */
-    int64_t held_ns[HELD_MOST]; /* and their times */
-    size_t held_count;
-};
+enum { SHOWN_MOST = 40, FIELDS_MOST = STREAM_CHANNELS_MOST + 1 };
 
 int line_stream_new(double rate_hz, const struct stream_sink *sink, struct complaints *complaints,
                     struct line_stream **out, struct err *err)
@@ -62,9 +22,11 @@ int line_stream_new(double rate_hz, const struct stream_sink *sink, struct compl
     made->complaints = complaints;
     made->rate_hz = rate_hz;
     made->line = malloc(LINE_MOST);
+    made->waiting.text = malloc(LINE_MOST);
     made->fields = malloc(2 * LINE_MOST);
+    made->field = malloc(FIELDS_MOST * sizeof *made->field);
     int code = csv_init(&made->csv, CSV_APPEND_NULL);
-    if (!made->line || !made->fields || code != 0) {
+    if (!made->line || !made->waiting.text || !made->fields || !made->field || code != 0) {
         line_stream_free(made);
         return err_memory(err, "a stream of lines");
     }
@@ -79,40 +41,12 @@ void line_stream_free(struct line_stream *lines)
     csv_free(&lines->csv);
     arena_free(&lines->arena);
     free(lines->line);
+    free(lines->waiting.text);
     free(lines->fields);
     free((void *)lines->field);
     free(lines->values);
     free(lines->held);
-    str_free(&lines->assumed);
     free(lines);
-}
-
-static void put_quoted(struct str *out, const char *text)
-{
-    str_putc(out, '"');
-    for (; *text; text++) {
-        if (*text == '"')
-            str_putc(out, '"');
-        str_putc(out, *text);
-    }
-    str_putc(out, '"');
-}
-
-int line_stream_assume(struct line_stream *lines, const char *const *headers, size_t count,
-                       double rate_hz, struct err *err)
-{
-    str_clear(&lines->assumed);
-    str_put(&lines->assumed, "t");
-    for (size_t i = 0; i < count; i++) {
-        str_putc(&lines->assumed, ',');
-        put_quoted(&lines->assumed, headers[i]);
-    }
-    lines->assumed_count = count;
-    lines->assumed_hz = rate_hz;
-    bool good = !str_failed(&lines->assumed) && lines->assumed.length < LINE_MOST;
-    if (!good)
-        lines->assumed_count = 0;
-    return good ? ERR_OK : err_memory(err, "the channels");
 }
 
 bool line_stream_has_header(const struct line_stream *lines)
@@ -125,10 +59,7 @@ bool line_stream_has_header(const struct line_stream *lines)
 static void take_field(void *text, size_t length, void *context)
 {
     struct line_stream *lines = context;
-    struct err err = {0};
-    if (lines->fields_used + length + 1 > 2 * LINE_MOST ||
-        array_reserve((void **)&lines->field, &lines->field_room, lines->field_count + 1,
-                      sizeof *lines->field, &err)) {
+    if (lines->fields_used + length + 1 > 2 * LINE_MOST || lines->field_count == FIELDS_MOST) {
         lines->field_failed = true;
         return;
     }
@@ -139,124 +70,75 @@ static void take_field(void *text, size_t length, void *context)
     lines->field[lines->field_count++] = to;
 }
 
-/* The line's fields by this delimiter; false when it is no line of CSV. */
-static bool split(struct line_stream *lines, char delimiter)
+/* A quote that is not closed hides what was between: libcsv would close it. */
+static bool quotes_close(const char *text, size_t length)
+{
+    size_t quotes = 0;
+    const char *end = text + length;
+    while ((text = memchr(text, '"', (size_t)(end - text)))) {
+        quotes++;
+        text++;
+    }
+    return quotes % 2 == 0;
+}
+
+/* A line's fields by this delimiter; false when it is no line of CSV. */
+static bool split(struct line_stream *lines, const char *text, size_t length, char delimiter)
 {
     lines->fields_used = lines->field_count = 0;
     lines->field_failed = false;
     csv_set_delim(&lines->csv, (unsigned char)delimiter);
-    bool good = csv_parse(&lines->csv, lines->line, lines->length, take_field, NULL, lines) ==
-                lines->length;
+    bool good = csv_parse(&lines->csv, text, length, take_field, NULL, lines) == length;
     good = csv_fini(&lines->csv, take_field, NULL, lines) == 0 && good;
-    return good && !lines->field_failed && lines->field_count > 0;
+    return good && !lines->field_failed && lines->field_count > 0 && quotes_close(text, length);
+}
+
+static bool split_line(struct line_stream *lines, char delimiter)
+{
+    return split(lines, lines->line, lines->length, delimiter);
+}
+
+static bool split_waiting(struct line_stream *lines)
+{
+    const struct waiting_line *waiting = &lines->waiting;
+    return split(lines, waiting->text, waiting->length, waiting->delimiter);
 }
 
 static char find_delimiter(const struct line_stream *lines)
 {
-    size_t counts[3] = {0};
-    static const char candidates[] = ",;\t";
-    for (size_t i = 0; i < lines->length; i++) {
-        const char *at = strchr(candidates, lines->line[i]);
-        if (at && *at)
-            counts[at - candidates]++;
+    static const char candidates[] = "\t;";
+    for (size_t i = 0; candidates[i]; i++) {
+        if (memchr(lines->line, candidates[i], lines->length))
+            return candidates[i];
     }
-    return counts[2] > 0 ? '\t' : counts[1] > 0 ? ';' : ',';
+    return ',';
 }
 
-static bool read_number(const struct line_stream *lines, const char *text, double *out)
+static bool read_number(char delimiter, const char *text, double *out)
 {
-    return lines->delimiter == ',' ? number_parse(text, out) : number_parse_comma(text, out);
+    return delimiter == ',' ? number_parse(text, out) : number_parse_comma(text, out);
 }
 
-static bool read_time(const struct line_stream *lines, const char *text, int64_t *out)
+/* Times whose differences an int64_t holds: 140 years to either side. */
+static bool read_time(char delimiter, double scale, const char *text, int64_t *out)
 {
     double value;
     struct time_arg time;
-    if (read_number(lines, text, &value)) {
-        *out = (int64_t)llround(value * lines->time_scale);
-        return fabs(value * lines->time_scale) < 9e18;
+    if (read_number(delimiter, text, &value)) {
+        if (fabs(value * scale) > 4.4e18)
+            return false;
+        *out = llround(value * scale);
+        return true;
     }
     if (day_time_parse(text, out))
         return true;
-    if (!iso_parse(text, &time))
+    if (!iso_parse(text, &time) || llabs(time.ns) > 4400000000 * NS_PER_S)
         return false;
     *out = time.ns;
     return true;
 }
 
 /* ---- header ---- */
-
-/* A header has words where rows have numbers, and says where the time is, unless a rate does. */
-static bool looks_like_header(const struct line_stream *lines)
-{
-    bool time = false;
-    for (size_t i = 0; i < lines->field_count; i++) {
-        const char *text = lines->field[i];
-        double value;
-        if (!*text || csv_text_missing(text) || number_parse_comma(text, &value) ||
-            !utf8_valid(text, strlen(text)))
-            return false;
-        char label[32];
-        (void)snprintf(label, sizeof label, "%.*s", (int)strcspn(text, "[("), text);
-        size_t end = strlen(label);
-        while (end > 0 && label[end - 1] == ' ')
-            label[--end] = '\0';
-        time = time || csv_time_name(label);
-    }
-    size_t channels = lines->field_count - (time ? 1 : 0);
-    return channels > 0 && (time || lines->rate_hz > 0);
-}
-
-static const char *unique_label(struct line_stream *lines, const char *label)
-{
-    int number = 1;
-    for (size_t i = 0; i < lines->channel_count; i++)
-        number += strcmp(lines->channels[i].label, label) == 0;
-    return number == 1 ? label : arena_printf(&lines->arena, "%s #%d", label, number);
-}
-
-static int add_channel(struct line_stream *lines, const char *label, const char *unit,
-                       struct err *err)
-{
-    char why[120];
-    struct stream_channel *made = &lines->channels[lines->channel_count];
-    const char *name = *label
-                           ? unique_label(lines, label)
-                           : arena_printf(&lines->arena, "channel %zu", lines->channel_count + 1);
-    if (!name)
-        return err_memory(err, "a channel");
-    *made = (struct stream_channel){.label = name,
-                                    .unit = unit,
-                                    .role = role_of_label(name, unit, why, sizeof why),
-                                    .transducer = "",
-                                    .prefilter = "",
-                                    .samples = 1};
-    lines->channel_count++;
-    return ERR_OK;
-}
-
-/* Columns of the line as it is split now; `bare`: it is a row, and the columns have no names. */
-static int take_columns(struct line_stream *lines, bool bare, struct err *err)
-{
-    arena_free(&lines->arena);
-    lines->channels = arena_alloc(&lines->arena, lines->field_count, sizeof *lines->channels);
-    lines->channel_count = 0;
-    lines->time_column = NO_COLUMN;
-    lines->width = lines->field_count;
-    int failed = lines->channels ? ERR_OK : err_memory(err, "the channels");
-    for (size_t i = 0; i < lines->field_count && !failed; i++) {
-        const char *label = "", *unit = "";
-        if (!bare)
-            failed = csv_split_header(&lines->arena, lines->field[i], &label, &unit, err);
-        if (!failed && lines->time_column == NO_COLUMN && csv_time_name(label)) {
-            lines->time_column = (int)i;
-            lines->time_scale = ascii_equal(unit, "ms") ? 1e6 : 1e9;
-        } else if (!failed) {
-            failed = add_channel(lines, label, unit, err);
-        }
-    }
-    return failed;
-}
 
 static int tell_header(struct line_stream *lines, struct err *err)
 {
@@ -266,10 +148,13 @@ static int tell_header(struct line_stream *lines, struct err *err)
     return lines->sink.header(lines->sink.context, &header, err);
 }
 
-static int begin(struct line_stream *lines, bool bare, struct err *err)
+/* The waiting line, as it is split now, is the header. */
+static int begin(struct line_stream *lines, struct err *err)
 {
+    const struct waiting_line *waiting = &lines->waiting;
     void *values = NULL, *held = NULL;
-    int failed = take_columns(lines, bare, err);
+    lines->has_header = false; /* should memory run out half way, rows must not go on */
+    int failed = line_header_take(lines, waiting->what == WAITS_ROW, waiting->time_column, err);
     if (!failed)
         failed = array_new(&values, lines->channel_count, sizeof *lines->values, err);
     if (!failed)
@@ -283,25 +168,23 @@ static int begin(struct line_stream *lines, bool bare, struct err *err)
     lines->values = values;
     lines->held = held;
     lines->held_count = 0;
+    lines->delimiter = waiting->delimiter;
     lines->has_header = true;
     lines->rate_known = false;
-    double rate_hz = lines->rate_hz;
-    if (rate_hz <= 0 && lines->time_column == NO_COLUMN)
-        rate_hz = lines->assumed_hz; /* nothing else lets rows without a time in */
-    if (rate_hz <= 0)
+    if (lines->rate_hz <= 0)
         return ERR_OK;
-    lines->rate = line_rate_of_hz(rate_hz);
+    lines->rate = line_rate_of_hz(lines->rate_hz);
     return tell_header(lines, err);
 }
 
 /* ---- rows ---- */
 
-static void garbled(struct line_stream *lines, const char *why)
+static void garbled(struct line_stream *lines, const char *text, size_t length, const char *why)
 {
     char shown[SHOWN_MOST + 1];
-    size_t length = lines->length < SHOWN_MOST ? lines->length : SHOWN_MOST;
+    length = length < SHOWN_MOST ? length : SHOWN_MOST;
     for (size_t i = 0; i < length; i++)
-        shown[i] = lines->line[i] >= ' ' && lines->line[i] < 127 ? lines->line[i] : '.';
+        shown[i] = text[i] >= ' ' && text[i] < 127 ? text[i] : '.';
     shown[length] = '\0';
     complain(lines->complaints, 1, "'%s': %s", shown, why);
 }
@@ -318,11 +201,11 @@ static bool read_row(struct line_stream *lines, int64_t *own_ns)
         const char *text = lines->field[i];
         double value = (double)NAN;
         if ((int)i == lines->time_column) {
-            if (!read_time(lines, text, own_ns))
+            if (!read_time(lines->delimiter, lines->time_scale, text, own_ns))
                 return false;
             continue;
         }
-        if (!csv_text_missing(text) && !read_number(lines, text, &value))
+        if (!csv_text_missing(text) && !read_number(lines->delimiter, text, &value))
             return false;
         lines->values[channel++] = (float)value;
     }
@@ -333,7 +216,7 @@ static bool read_row(struct line_stream *lines, int64_t *own_ns)
 static int release(struct line_stream *lines, bool final, struct err *err)
 {
     if (!line_rate_of_times(lines->held_ns, lines->held_count, final, &lines->rate)) {
-        if (lines->held_count < HELD_MOST)
+        if (lines->held_count < HELD_MOST && !final)
             return ERR_OK;
         complain(lines->complaints, (int64_t)lines->held_count,
                  "column t does not rise: no rate can be told from it; give one with --rate");
@@ -358,110 +241,139 @@ static int put_row(struct line_stream *lines, int64_t own_ns, struct err *err)
     return release(lines, false, err);
 }
 
-/* Are the fields from `first` on numbers, or missing ones? */
-static bool all_numbers(const struct line_stream *lines, size_t first)
+/* ---- which line is what ---- */
+
+/* Is the line a row by its fields: so many, and all of them numbers, missing, or the time? */
+static bool fits(const struct line_stream *lines, char delimiter, size_t width, int time_column)
 {
     double value;
-    for (size_t i = first; i < lines->field_count; i++) {
-        if (!csv_text_missing(lines->field[i]) && !read_number(lines, lines->field[i], &value))
+    int64_t time_ns;
+    if (lines->field_count != width)
+        return false;
+    for (size_t i = 0; i < width; i++) {
+        const char *text = lines->field[i];
+        bool good = (int)i == time_column
+                        ? read_time(delimiter, 1e9, text, &time_ns)
+                        : csv_text_missing(text) || read_number(delimiter, text, &value);
+        if (!good)
             return false;
     }
     return true;
 }
 
-static int another_line(struct line_stream *lines, struct err *err)
+static bool fits_waiting(struct line_stream *lines)
+{
+    const struct waiting_line *waiting = &lines->waiting;
+    return waiting->what != WAITS_NOTHING && split_line(lines, waiting->delimiter) &&
+           fits(lines, waiting->delimiter, waiting->width, waiting->time_column);
+}
+
+static void drop_waiting(struct line_stream *lines)
+{
+    if (lines->waiting.what != WAITS_NOTHING)
+        garbled(lines, lines->waiting.text, lines->waiting.length, "no row of it followed");
+    lines->waiting.what = WAITS_NOTHING;
+}
+
+/* A device says other words than its header, and a connection is joined in the middle of a row:
+ * whether a line begins another header is only believed once a row follows that has its columns. */
+static void wait_for_row(struct line_stream *lines, bool header, char delimiter, int time_column)
+{
+    struct waiting_line *waiting = &lines->waiting;
+    bool same = waiting->what == WAITS_HEADER && header && waiting->length == lines->length &&
+                memcmp(waiting->text, lines->line, lines->length) == 0;
+    if (!same)
+        drop_waiting(lines);
+    waiting->what = header ? WAITS_HEADER : WAITS_ROW;
+    memcpy(waiting->text, lines->line, lines->length);
+    waiting->length = lines->length;
+    waiting->delimiter = delimiter;
+    waiting->width = lines->field_count;
+    waiting->time_column = time_column;
+}
+
+static int put_line(struct line_stream *lines, struct err *err)
 {
     int64_t own_ns;
-    if (split(lines, lines->delimiter) && read_row(lines, &own_ns))
+    if (read_row(lines, &own_ns))
         return put_row(lines, own_ns, err);
-    char delimiter = find_delimiter(lines);
-    if (!split(lines, delimiter) || !looks_like_header(lines)) {
-        garbled(lines, "not a row of this stream");
-        return ERR_OK;
-    }
+    garbled(lines, lines->line, lines->length, "not a row of this stream");
+    return ERR_OK;
+}
+
+/* The line is a row of the one that waits, which is a header then. */
+static int believe(struct line_stream *lines, struct err *err)
+{
     int failed = lines->rate_known || lines->held_count == 0 ? ERR_OK : release(lines, true, err);
-    if (failed || !split(lines, delimiter))
-        return failed;
-    lines->delimiter = delimiter;
-    return begin(lines, false, err);
+    if (!failed && split_waiting(lines))
+        failed = begin(lines, err);
+    if (!failed && lines->waiting.what == WAITS_ROW)
+        failed = put_line(lines, err);
+    lines->waiting.what = WAITS_NOTHING;
+    return failed || !split_line(lines, lines->delimiter) ? failed : put_line(lines, err);
 }
 
-/* Could the line, as it is split, be a row of the channels that are assumed? */
-static bool fits_assumed(const struct line_stream *lines)
-{
-    int64_t time;
-    bool timed = lines->field_count == lines->assumed_count + 1;
-    if (lines->assumed_count == 0 || (!timed && lines->field_count != lines->assumed_count))
-        return false;
-    return all_numbers(lines, timed) && (!timed || read_time(lines, lines->field[0], &time));
-}
-
-/* Takes the assumed header as if it had come, then the row that is in the line. */
-static int begin_assumed(struct line_stream *lines, struct err *err)
-{
-    bool timed = lines->field_count == lines->assumed_count + 1;
-    char delimiter = lines->delimiter;
-    size_t skip = timed ? 0 : 2; /* "t," */
-    char *row = malloc(lines->length + 1);
-    size_t row_length = lines->length;
-    if (!row)
-        return err_memory(err, "a row");
-    memcpy(row, lines->line, row_length);
-    lines->length = lines->assumed.length - skip;
-    memcpy(lines->line, lines->assumed.text + skip, lines->length);
-    bool good = split(lines, ',');
-    int failed = good ? begin(lines, false, err) : ERR_OK;
-    lines->length = row_length;
-    memcpy(lines->line, row, row_length);
-    free(row);
-    lines->delimiter = delimiter;
-    return failed || !good ? failed : another_line(lines, err);
-}
-
-static int first_line(struct line_stream *lines, struct err *err)
+static int take_line(struct line_stream *lines, struct err *err)
 {
     int64_t own_ns;
-    lines->delimiter = find_delimiter(lines);
-    if (!split(lines, lines->delimiter)) {
-        garbled(lines, "not a line of numbers");
-        return ERR_OK;
+    int time_column;
+    if (fits_waiting(lines))
+        return believe(lines, err);
+    if (lines->has_header && split_line(lines, lines->delimiter) && read_row(lines, &own_ns)) {
+        drop_waiting(lines);
+        return put_row(lines, own_ns, err);
     }
-    if (looks_like_header(lines))
-        return begin(lines, false, err);
-    lines->time_scale = 1e9;
-    /* Half a row may look like a whole one without its time: two of the same width must come. */
-    size_t before = lines->assumed_width;
-    lines->assumed_width = fits_assumed(lines) ? lines->field_count : 0;
-    if (lines->assumed_width > 0 && lines->assumed_width == before)
-        return begin_assumed(lines, err);
-    if (lines->rate_hz <= 0 || !all_numbers(lines, 0)) {
-        garbled(lines, "no header yet");
-        return ERR_OK;
-    }
-    int failed = begin(lines, true, err);
-    if (!failed && read_row(lines, &own_ns))
-        failed = put_row(lines, own_ns, err);
-    return failed;
+    char delimiter = find_delimiter(lines);
+    bool good = split_line(lines, delimiter);
+    if (good && line_header_looks(lines, &time_column))
+        wait_for_row(lines, true, delimiter, time_column);
+    else if (good && !lines->has_header && lines->rate_hz > 0 &&
+             lines->field_count <= STREAM_CHANNELS_MOST &&
+             fits(lines, delimiter, lines->field_count, NO_COLUMN))
+        wait_for_row(lines, false, delimiter, NO_COLUMN);
+    else
+        garbled(lines, lines->line, lines->length,
+                lines->has_header ? "not a row of this stream" : "no header yet");
+    return ERR_OK;
 }
 
-static int end_line(struct line_stream *lines, struct err *err)
+/* Not where tabs delimit: such a row is one of missing samples. */
+static bool is_blank(const struct line_stream *lines)
+{
+    bool tabs = lines->has_header && lines->delimiter == '\t';
+    for (size_t i = 0; i < lines->length; i++) {
+        if (lines->line[i] != ' ' && lines->line[i] != '\r' && (lines->line[i] != '\t' || tabs))
+            return false;
+    }
+    return true;
+}
+
+/* Drops what is around the text: zero bytes that a waking serial line sends, a mark of byte order,
+ * the line's end. */
+static void trim(struct line_stream *lines)
 {
     size_t start = 0;
-    int failed = ERR_OK;
-    /* A serial line that wakes up often sends some zero bytes first. */
     while (start < lines->length && lines->line[start] == '\0')
         start++;
+    if (lines->length - start >= 3 && memcmp(lines->line + start, "\xEF\xBB\xBF", 3) == 0)
+        start += 3;
     memmove(lines->line, lines->line + start, lines->length - start);
     lines->length -= start;
     while (lines->length > 0 &&
            (lines->line[lines->length - 1] == '\r' || lines->line[lines->length - 1] == '\0'))
         lines->length--;
+}
+
+static int end_line(struct line_stream *lines, struct err *err)
+{
+    int failed = ERR_OK;
+    trim(lines);
     if (lines->too_long)
         complain(lines->complaints, 1, "a line longer than %d bytes", LINE_MOST);
     else if (memchr(lines->line, '\0', lines->length))
-        garbled(lines, "zero bytes");
-    else if (lines->length > 0)
-        failed = lines->has_header ? another_line(lines, err) : first_line(lines, err);
+        garbled(lines, lines->line, lines->length, "zero bytes");
+    else if (!is_blank(lines))
+        failed = take_line(lines, err);
     lines->length = 0;
     lines->too_long = false;
     return failed;
@@ -496,4 +408,14 @@ void line_stream_break(struct line_stream *lines)
         complain(lines->complaints, 1, "broke off in the middle of a line");
     lines->length = 0;
     lines->too_long = false;
+}
+
+void line_stream_forget(struct line_stream *lines)
+{
+    drop_waiting(lines);
+    if (lines->held_count > 0)
+        complain(lines->complaints, (int64_t)lines->held_count,
+                 "records came before the rate of these rows could be told");
+    lines->held_count = 0;
+    lines->has_header = false;
 }

@@ -10,7 +10,7 @@
 #include "recording/reader.h"
 #include "recording/stream_parser_impl.h"
 
-enum { RECORD_MOST = 64 << 20, SIGNALS_MOST = 1024, SIGNALS_AT = 252 };
+enum { RECORD_MOST = 64 << 20, SIGNALS_AT = 252 };
 
 enum expecting { EXPECT_HEADER, EXPECT_RECORD };
 
@@ -24,7 +24,9 @@ struct record_stream {
     struct edf_header header;
     struct stream_channel *channels; /* in home.arena */
     size_t channel_count;
-    float *samples; /* of one record, shape (all samples) */
+    float *samples;                 /* of one record, shape (all samples) */
+    bool any_record, signed_onsets; /* of this header: one came; its onset had a sign */
+    size_t delivered; /* bytes of the last record that are kept: they may begin a header */
 };
 
 static const uint8_t signatures[2][SIGNATURE_SIZE] = {{'0', ' ', ' ', ' ', ' ', ' ', ' ', ' '},
@@ -73,26 +75,31 @@ void record_stream_free(struct record_stream *records)
 
 void record_stream_break(struct record_stream *records)
 {
-    if (records->count > 0)
-        complain(records->complaints, (int64_t)records->count, "broke off in the middle of a %s",
+    if (records->count > records->delivered)
+        complain(records->complaints, (int64_t)(records->count - records->delivered),
+                 "broke off in the middle of a %s",
                  records->expecting == EXPECT_HEADER ? "header" : "record");
-    records->count = 0;
+    records->count = records->delivered = 0;
     records->expecting = EXPECT_HEADER;
 }
 
 /* ---- header ---- */
 
-/* Bytes of the whole header once its fixed part is there; 0 when that cannot be one. */
-static size_t header_size(const struct record_stream *records)
+/* Bytes of the whole header that this fixed part begins; 0 when it cannot be one. */
+static size_t header_size(const uint8_t *fixed)
 {
     char text[5] = {0};
     int64_t signals;
-    if (records->count < EDF_FIXED_BYTES)
-        return EDF_FIXED_BYTES;
-    memcpy(text, records->bytes + SIGNALS_AT, 4);
-    if (!integer_parse(text, &signals) || signals < 1 || signals > SIGNALS_MOST)
+    memcpy(text, fixed + SIGNALS_AT, 4);
+    if (!integer_parse(text, &signals) || signals < 1 || signals > STREAM_CHANNELS_MOST)
         return 0;
     return (size_t)(EDF_FIXED_BYTES + signals * EDF_SIGNAL_BYTES);
+}
+
+/* A limit that no converter has becomes none. */
+static int to_int(double digital)
+{
+    return fabs(digital) < 1 << 30 ? (int)lrint(digital) : 0;
 }
 
 static int take_channels(struct record_stream *records, struct err *err)
@@ -105,14 +112,10 @@ static int take_channels(struct record_stream *records, struct err *err)
     for (size_t i = 0; i < header->signal_count; i++) {
         const struct edf_signal *signal = &header->signals[i];
         char why[120];
-        int number = 1;
-        if (signal->annotations || signal->samples < 1)
+        if (signal->annotations || signal->samples == 0)
             continue;
-        for (size_t k = 0; k < records->channel_count; k++)
-            number += strcmp(records->channels[k].label, signal->label) == 0;
-        const char *label = !*signal->label ? arena_printf(arena, "channel %zu", i + 1)
-                            : number == 1   ? signal->label
-                                            : arena_printf(arena, "%s #%d", signal->label, number);
+        const char *label =
+            stream_label(arena, records->channels, records->channel_count, signal->label);
         if (!label)
             return err_memory(err, "a channel");
         double dmin =
@@ -127,8 +130,8 @@ static int take_channels(struct record_stream *records, struct err *err)
                                     .prefilter = signal->prefilter,
                                     .physical_min = signal->physical_min,
                                     .physical_max = signal->physical_max,
-                                    .digital_min = (int)lrint(dmin),
-                                    .digital_max = (int)lrint(dmax),
+                                    .digital_min = to_int(dmin),
+                                    .digital_max = to_int(dmax),
                                     .samples = (int)signal->samples};
     }
     return ERR_OK;
@@ -161,6 +164,7 @@ static int tell_header(struct record_stream *records, struct err *err)
     }
     free(records->samples);
     records->samples = samples;
+    records->any_record = false;
     struct stream_header header = {records->channels, records->channel_count,
                                    records->header.record_ns, 1};
     records->expecting = EXPECT_RECORD;
@@ -174,14 +178,16 @@ static void consume(struct record_stream *records, size_t count)
     records->count -= count;
 }
 
-/* The bytes collected are no header: skips to where the next one may begin. */
+/* Skips at least one byte, to where the next header may begin. */
 static void skip_to_signature(struct record_stream *records, const char *why)
 {
     size_t at = 1;
     while (at < records->count && !record_signature(records->bytes + at, records->count - at))
         at++;
-    complain(records->complaints, (int64_t)at, "no header of EDF or BDF: %s", why);
+    complain(records->complaints, (int64_t)at, "%s; looking for the next header of EDF or BDF",
+             why);
     consume(records, at);
+    records->expecting = EXPECT_HEADER;
 }
 
 static int end_header(struct record_stream *records, size_t size, struct err *err)
@@ -224,8 +230,9 @@ static float *decode(const struct edf_signal *signal, const uint8_t *from, int w
     return out;
 }
 
-/* The onset that an EDF+ record states; false when it should and does not. */
-static bool own_onset(const struct record_stream *records, int64_t *own_ns)
+/* The onset that an EDF+ record states; false when it should and does not. After a first onset
+ * with its sign, one without says that a byte was lost. */
+static bool own_onset(struct record_stream *records, int64_t *own_ns)
 {
     const struct edf_header *header = &records->header;
     *own_ns = NS_NONE;
@@ -233,23 +240,76 @@ static bool own_onset(const struct record_stream *records, int64_t *own_ns)
         return true;
     for (size_t i = 0; i < header->signal_count; i++) {
         const struct edf_signal *signal = &header->signals[i];
-        if (signal->annotations)
-            return tal_record_onset(records->bytes + signal->at,
-                                    (size_t)(signal->samples * header->width), own_ns);
+        const uint8_t *from = records->bytes + signal->at;
+        if (!signal->annotations)
+            continue;
+        if (!tal_record_onset(from, (size_t)(signal->samples * header->width), own_ns))
+            return false;
+        bool has_sign = *from == '+' || *from == '-';
+        if (!records->any_record)
+            records->signed_onsets = has_sign;
+        records->any_record = true;
+        return has_sign || !records->signed_onsets;
     }
     return true;
 }
 
-static int end_record(struct record_stream *records, struct err *err)
+/* Is a header there, where a signature is? It says how long it is itself. */
+static bool header_at(const struct record_stream *records, size_t at)
+{
+    enum { SIZE_AT = 184, SIZE_BYTES = 8 };
+    char text[SIZE_BYTES + 1] = {0};
+    int64_t said;
+    memcpy(text, records->bytes + at + SIZE_AT, SIZE_BYTES);
+    return integer_parse(text, &said) && said > 0 &&
+           (size_t)said == header_size(records->bytes + at);
+}
+
+/* Where inside a plain record a header begins: bytes were lost, and nothing else tells. 0 = there
+ * is none; *need: bytes it takes to tell, 0 = told. */
+static size_t header_inside(const struct record_stream *records, size_t *need)
+{
+    const uint8_t *end = records->bytes + records->header.record_bytes;
+    for (size_t i = 0; i < 2; i++) {
+        const uint8_t *from = records->bytes + 1, *found;
+        while (from < end &&
+               (found = memmem(from, (size_t)(end - from), signatures[i], SIGNATURE_SIZE))) {
+            size_t at = (size_t)(found - records->bytes);
+            if (records->count < at + EDF_FIXED_BYTES) {
+                *need = at + EDF_FIXED_BYTES;
+                return 0;
+            }
+            if (header_at(records, at))
+                return at;
+            from = found + 1;
+        }
+    }
+    return 0;
+}
+
+/* Bytes at the end of the record that may begin a header. */
+static size_t signature_across(const struct record_stream *records)
+{
+    size_t size = (size_t)records->header.record_bytes;
+    size_t most = size < SIGNATURE_SIZE ? size : SIGNATURE_SIZE;
+    for (size_t k = most - 1; k > 0; k--) {
+        if (record_signature(records->bytes + size - k, k))
+            return k;
+    }
+    return 0;
+}
+
+static int end_record(struct record_stream *records, size_t *need, struct err *err)
 {
     const struct edf_header *header = &records->header;
     int64_t own_ns;
     float *to = records->samples;
-    if (!own_onset(records, &own_ns)) {
-        complain(records->complaints, header->record_bytes,
-                 "a record states no onset: bytes were lost; looking for the next header");
-        consume(records, (size_t)header->record_bytes);
-        records->expecting = EXPECT_HEADER;
+    size_t inside = header->plus ? 0 : header_inside(records, need);
+    if (*need > 0)
+        return ERR_OK;
+    if (inside > 0 || !own_onset(records, &own_ns)) {
+        skip_to_signature(records, inside > 0 ? "a record is cut short: bytes were lost"
+                                              : "a record states no onset: bytes were lost");
         return ERR_OK;
     }
     for (size_t i = 0; i < header->signal_count; i++) {
@@ -257,56 +317,61 @@ static int end_record(struct record_stream *records, struct err *err)
         if (!signal->annotations)
             to = decode(signal, records->bytes + signal->at, header->width, to);
     }
-    consume(records, (size_t)header->record_bytes);
+    records->delivered = header->plus ? 0 : signature_across(records);
+    consume(records, (size_t)header->record_bytes - records->delivered);
     return records->sink.block(records->sink.context, own_ns, records->samples, err);
 }
 
-/* A header where a record should begin: told by its signature, and by saying how long it is. */
-static bool header_instead(const struct record_stream *records)
-{
-    enum { SIZE_AT = 184, SIZE_BYTES = 8 };
-    char text[SIZE_BYTES + 1] = {0};
-    int64_t said;
-    if (records->count < EDF_FIXED_BYTES)
-        return false;
-    memcpy(text, records->bytes + SIZE_AT, SIZE_BYTES);
-    return integer_parse(text, &said) && said > 0 && (size_t)said == header_size(records);
-}
-
-/* Does what can be done with the bytes there are; *need is 0 then, else how many it takes. */
+/* Does the best with the bytes there are; *need is 0 then, else how many it takes. */
 static int step_header(struct record_stream *records, size_t *need, struct err *err)
 {
     *need = 0;
     if (records->count < SIGNATURE_SIZE) {
         *need = SIGNATURE_SIZE;
-        return ERR_OK;
+    } else if (!record_signature(records->bytes, SIGNATURE_SIZE)) {
+        skip_to_signature(records, "its first bytes are no header's");
+    } else if (records->count < EDF_FIXED_BYTES) {
+        *need = EDF_FIXED_BYTES;
+    } else {
+        size_t size = header_size(records->bytes);
+        if (size == 0)
+            skip_to_signature(records, "its number of signals is not one from 1 to 1024");
+        else if (records->count < size)
+            *need = size;
+        else
+            return end_header(records, size, err);
     }
-    size_t size = record_signature(records->bytes, records->count) ? header_size(records) : 0;
-    if (size == 0) {
-        skip_to_signature(records, "its first bytes are others");
-        return ERR_OK;
-    }
-    if (records->count >= size && records->count >= EDF_FIXED_BYTES + EDF_SIGNAL_BYTES)
-        return end_header(records, size, err);
-    *need = size > records->count ? size : records->count + 1;
     return ERR_OK;
+}
+
+/* Is a header there where a record should begin? *need: bytes it takes to tell, 0 = told. */
+static bool begins_header(const struct record_stream *records, size_t *need)
+{
+    *need = 0;
+    if (records->count == 0 || !record_signature(records->bytes, records->count))
+        return false;
+    if (records->count >= EDF_FIXED_BYTES)
+        return header_at(records, 0);
+    *need = records->count < SIGNATURE_SIZE ? records->count + 1 : EDF_FIXED_BYTES;
+    return false;
 }
 
 static int step_record(struct record_stream *records, size_t *need, struct err *err)
 {
     size_t size = (size_t)records->header.record_bytes;
-    bool signature =
-        records->count >= SIGNATURE_SIZE && record_signature(records->bytes, records->count);
-    *need = 0;
-    /* A record that begins like a header is looked at as far as a header tells. */
-    if (signature && records->count < EDF_FIXED_BYTES) {
-        *need = EDF_FIXED_BYTES;
-    } else if (signature && header_instead(records)) {
+    bool header = begins_header(records, need);
+    if (*need > 0)
+        return ERR_OK;
+    if (header) {
         records->expecting = EXPECT_HEADER;
+        records->delivered = 0;
+    } else if (records->delivered > 0) {
+        consume(records, records->delivered);
+        records->delivered = 0;
     } else if (records->count < size) {
         *need = records->count < SIGNATURE_SIZE && size > SIGNATURE_SIZE ? SIGNATURE_SIZE : size;
     } else {
-        return end_record(records, err);
+        return end_record(records, need, err);
     }
     return ERR_OK;
 }

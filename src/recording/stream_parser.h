@@ -5,10 +5,14 @@
  * Lines: a header `t,ECG II [mV],EDA [uS]`, then rows; comma, semicolon or tab; decimal comma where
  * the delimiter is not one; `t` (seconds on the stream's own clock) may be missing when a rate is
  * given. Without one the rate is estimated from the first rows' times and rounded to a rate that
- * devices have. A later line that is a header again (not numbers) changes the channels. A row that
- * cannot be read is counted and skipped; an empty cell or NaN is a missing sample.
+ * devices have. A later line that is a header again (not numbers) changes the channels. A header is
+ * told once the line after it is a row that fits; a line that nothing fits was noise. Without
+ * header, but with a rate, two rows that are as wide make one. A row that cannot be read is counted
+ * and skipped; an empty cell or NaN is a missing sample. Rows that still wait for their rate when
+ * the stream ends, 63 at most, are not told.
  * Records: header, then whole records, of EDF, EDF+, BDF, BDF+; a second header where a record
- * should begin changes the channels. Annotation signals are read for time-keeping only.
+ * should begin, or where bytes were lost, changes the channels. Annotation signals are read for
+ * time-keeping only.
  *
  * Bytes come in pieces of any size; nothing is kept of them but one line (64 KiB at most: a longer
  * one is garbled) or one record. Never fails on what comes: what cannot be read is counted.
@@ -53,16 +57,11 @@ struct stream_sink {
 
 struct stream_parser;
 
-/* `rate_hz` of lines without a time column; 0 = they have one. The sink is copied. */
+/* `rate_hz` of lines without a time column, from 0.0001 to 1000000; 0 = they have one. The sink is
+ * copied. */
 MUST_CHECK int stream_parser_new(double rate_hz, const struct stream_sink *sink,
                                  struct stream_parser **out, struct err *err);
 void stream_parser_free(struct stream_parser *parser);
-
-/* Lines that begin without a header, from a device that sends one only when it is switched on, have
- * the channels `headers` ("ECG II [mV]", as in a header; shape (count)) when their first row has as
- * many numbers, then at rate_hz, or one more: the time, first. */
-MUST_CHECK int stream_parser_assume(struct stream_parser *parser, const char *const *headers,
-                                    size_t count, double rate_hz, struct err *err);
 
 /* Fails only when memory runs out or the sink fails. */
 MUST_CHECK int stream_parser_feed(struct stream_parser *parser, const void *bytes, size_t count,

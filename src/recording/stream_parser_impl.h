@@ -11,7 +11,7 @@
 #include "recording/edf_header.h"
 #include "recording/stream_parser.h"
 
-enum { SIGNATURE_SIZE = 8, COMPLAINT_SIZE = 160 };
+enum { SIGNATURE_SIZE = 8, COMPLAINT_SIZE = 160, STREAM_CHANNELS_MOST = 1024 };
 
 struct complaints {
     int64_t count;
@@ -20,6 +20,11 @@ struct complaints {
 /* `by` more lines, or bytes, could not be read. */
 void complain(struct complaints *complaints, int64_t by, const char *format, ...) PRINTF_LIKE(3, 4);
 
+/* `label`, or "label #2" and so on where one of the channels so far has it. NULL when out of
+ * memory. */
+const char *stream_label(struct arena *arena, const struct stream_channel *channels, size_t count,
+                         const char *label);
+
 /* ---- line_stream.c ---- */
 
 struct line_stream;
@@ -27,13 +32,12 @@ MUST_CHECK int line_stream_new(double rate_hz, const struct stream_sink *sink,
                                struct complaints *complaints, struct line_stream **out,
                                struct err *err);
 void line_stream_free(struct line_stream *lines);
-/* As stream_parser_assume(). */
-MUST_CHECK int line_stream_assume(struct line_stream *lines, const char *const *headers,
-                                  size_t count, double rate_hz, struct err *err);
 MUST_CHECK int line_stream_feed(struct line_stream *lines, const char *bytes, size_t count,
                                 struct err *err);
 /* Half a line is dropped; channels stay as they are. */
 void line_stream_break(struct line_stream *lines);
+/* Another kind of stream began: the header is none of what comes later. */
+void line_stream_forget(struct line_stream *lines);
 /* Has it a header? Then bytes that look like nothing are its rows. */
 bool line_stream_has_header(const struct line_stream *lines);
 

@@ -54,7 +54,7 @@ static void tear_down(void)
     cr_expect_eq(system(command), 0);
 }
 
-TestSuite(live, .init = set_up, .fini = tear_down, .timeout = 60);
+TestSuite(live, .init = set_up, .fini = tear_down);
 
 /* A session as `live` begins it, without streams; its clocks go on only as the test says. */
 struct at_work {

@@ -1,6 +1,6 @@
 /*
  * test_source.c - where live bytes come from: FIFO, pseudo-terminal, TCP, standard input, a file
- * that grows. Waits for conditions, never for time.
+ * that grows. Waits for conditions, never for time. Names are test_source_name.c's.
  */
 #include <criterion/criterion.h>
 
@@ -39,7 +39,7 @@ static void tear_down(void)
     cr_expect_eq(system(command), 0);
 }
 
-TestSuite(source, .init = set_up, .fini = tear_down, .timeout = 60);
+TestSuite(source, .init = set_up, .fini = tear_down);
 
 static struct source *name(const char *what)
 {
@@ -70,6 +70,13 @@ static struct source *opened(const char *what)
     struct source *source = name(what);
     cr_assert_eq(open_until(source, &err), 0, "%s", err.text);
     return source;
+}
+
+static void open_again(struct source *source)
+{
+    struct err err = {0};
+    source_close(source);
+    cr_assert_eq(open_until(source, &err), 0, "%s", err.text);
 }
 
 static enum source_answer read_once(struct source *source, char *out, size_t room, size_t *count)
@@ -127,71 +134,7 @@ static void put(int fd, const char *bytes)
     cr_assert_eq(write(fd, bytes, strlen(bytes)), (ssize_t)strlen(bytes), "%s", strerror(errno));
 }
 
-/* ---- names ---- */
-
-Test(source, texts_that_cannot_be_meant_are_refused)
-{
-    static const char *const bad[] = {
-        "",
-        "fifo:",
-        "serial:",
-        "serial:/dev/ttyS0",
-        "serial:/dev/ttyS0@",
-        "serial:@9600",
-        "serial:/dev/ttyS0@9601",
-        "serial:/dev/ttyS0@-9600",
-        "serial:/dev/ttyS0@fast",
-        "serial:/dev/ttyS0@9600000000000",
-        "tcp:",
-        "tcp:monitor",
-        "tcp:monitor:",
-        "tcp::4000",
-        "tcp:monitor:0",
-        "tcp:monitor:65536",
-        "tcp:monitor:-1",
-        "tcp:monitor:http",
-        "tcp:::1:4000",
-        "tcp:[::1]",
-        "tcp:[::1",
-        "tcp:[::1:4000",
-        "tcp:[]:4000",
-        "tcp:monitor:4000 ",
-        "tcp:monitor:+4000",
-    };
-    for (size_t i = 0; i < sizeof bad / sizeof *bad; i++) {
-        struct source *source = NULL;
-        struct err err = {0};
-        cr_expect_eq(source_new(bad[i], &source, &err), ERR_USAGE, "'%s'", bad[i]);
-        cr_expect_null(source);
-        cr_expect_not_null(strstr(err.text, bad[i]), "%s", err.text);
-        cr_expect_null(strchr(err.text, '\n'));
-    }
-}
-
-Test(source, texts_that_can_be_meant)
-{
-    static const struct {
-        const char *text;
-        enum source_kind kind;
-        const char *name;
-    } good[] = {{"fifo:/tmp/a b", SOURCE_FIFO, "/tmp/a b"},
-                {"serial:/dev/ttyUSB0@115200", SOURCE_SERIAL, "/dev/ttyUSB0"},
-                {"serial:/dev/a@b@9600", SOURCE_SERIAL, "/dev/a@b"},
-                {"tcp:monitor:4000", SOURCE_TCP, "monitor"},
-                {"tcp:[::1]:65535", SOURCE_TCP, "::1"},
-                {"tcp:10.0.0.7:1", SOURCE_TCP, "10.0.0.7"},
-                {"-", SOURCE_STDIN, "-"},
-                {"growing.csv", SOURCE_FILE, "growing.csv"},
-                {"./fifo:a", SOURCE_FILE, "./fifo:a"}};
-    for (size_t i = 0; i < sizeof good / sizeof *good; i++) {
-        struct source *source = name(good[i].text);
-        cr_expect_eq(source->kind, good[i].kind, "%s", good[i].text);
-        cr_expect_str_eq(source->name, good[i].name);
-        cr_expect_eq(source_returns(source), source->kind != SOURCE_STDIN);
-        source_free(source);
-    }
-    source_free(NULL);
-}
+/* ---- what cannot be opened ---- */
 
 Test(source, what_is_not_there_or_another_thing_is_one_line)
 {
@@ -241,8 +184,7 @@ Test(source, a_fifo_and_its_writers)
         (void)close(writer);
         expect_bytes(source, "ther");
         expect_over(source);
-        source_close(source);
-        cr_assert_eq(open_until(source, &err), 0, "%s", err.text);
+        open_again(source);
         expect_nothing(source);
     }
     source_free(source);
@@ -330,7 +272,6 @@ static int listen_here(int family)
 
 static void expect_talk(int listener)
 {
-    struct err err = {0};
     struct source *source = opened(text);
     for (int turn = 0; turn < 2; turn++) {
         int peer = accept(listener, NULL, NULL);
@@ -340,9 +281,8 @@ static void expect_talk(int listener)
         expect_bytes(source, "0,1,2\n0,3");
         (void)close(peer);
         expect_over(source);
-        source_close(source);
         if (turn == 0)
-            cr_assert_eq(open_until(source, &err), 0, "%s", err.text);
+            open_again(source);
     }
     source_free(source);
 }
@@ -488,8 +428,7 @@ Test(source, a_file_that_shrinks_or_is_another_begins_anew)
     expect_over(source);
     cr_assert_eq(lseek(fd, 0, SEEK_SET), 0);
     put(fd, "short\n");
-    source_close(source);
-    cr_assert_eq(open_until(source, &err), 0, "%s", err.text);
+    open_again(source);
     expect_bytes(source, "short\n");
     expect_nothing(source);
     (void)close(fd);
@@ -498,8 +437,7 @@ Test(source, a_file_that_shrinks_or_is_another_begins_anew)
     put(fd, "another\n");
     cr_assert_eq(rename(other, path), 0);
     expect_over(source);
-    source_close(source);
-    cr_assert_eq(open_until(source, &err), 0, "%s", err.text);
+    open_again(source);
     expect_bytes(source, "another\n");
     (void)close(fd);
 

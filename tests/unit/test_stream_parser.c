@@ -1,467 +1,447 @@
 /*
- * test_stream_parser.c - streamed bytes to samples: lines and records, in pieces of any size, with
- * all that goes wrong on a line.
+ * test_stream_parser.c - lines of numbers as they stream in: headers, rows, garbled ones, breaks.
+ * Every input is played whole, byte by byte and in random pieces. Rates are test_line_rate.c's,
+ * records test_record_stream.c's.
  */
 #include <criterion/criterion.h>
 
 #include <math.h>
-#include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
-#include <unistd.h>
 
-#include "base/file.h"
 #include "base/ns.h"
-#include "base/str.h"
-#include "recording/edf_writer.h"
-#include "recording/recording.h"
-#include "recording/stream_parser.h"
+#include "stream_log.h"
 
-/* Everything the sink was told, as one text: two parsers agree when their texts do. */
-struct heard {
-    struct str text;
-    size_t values; /* of a block, by the last header */
-    int64_t headers, blocks;
-    int64_t block_ns, rows;
-    float last[8];
-    int64_t last_own_ns;
-};
+TestSuite(stream_parser);
 
-static int hear_header(void *context, const struct stream_header *header, struct err *err)
+static struct stream_log play_text(const char *text, double rate_hz)
 {
-    struct heard *heard = context;
-    (void)err;
-    heard->headers++;
-    heard->values = 0;
-    heard->block_ns = header->block_ns;
-    heard->rows = header->blocks;
-    str_putf(&heard->text, "H %lld/%lld", (long long)header->block_ns, (long long)header->blocks);
-    for (size_t i = 0; i < header->channel_count; i++) {
-        const struct stream_channel *c = &header->channels[i];
-        str_putf(&heard->text, " %s[%s]%s x%d %g..%g %d..%d", c->label, c->unit, role_name(c->role),
-                 c->samples, c->physical_min, c->physical_max, c->digital_min, c->digital_max);
-        heard->values += (size_t)c->samples;
-    }
-    str_putc(&heard->text, '\n');
-    return ERR_OK;
+    struct input input = {.rate_hz = rate_hz};
+    input_put_n(&input, text, strlen(text));
+    return input_play(&input);
 }
 
-static int hear_block(void *context, int64_t own_ns, const float *samples, struct err *err)
+/* Values of all blocks, one after the other. */
+static void expect_values(const struct stream_log *log, const float *want, size_t count)
 {
-    struct heard *heard = context;
-    (void)err;
-    cr_assert_gt(heard->headers, 0, "a block before any header");
-    heard->blocks++;
-    heard->last_own_ns = own_ns;
-    str_putf(&heard->text, "B %lld", (long long)own_ns);
-    for (size_t i = 0; i < heard->values; i++) {
-        str_putf(&heard->text, " %.9g", (double)samples[i]);
-        if (i < 8)
-            heard->last[i] = samples[i];
-    }
-    str_putc(&heard->text, '\n');
-    return ERR_OK;
+    cr_assert_eq(log->value_count, count, "%zu values, not %zu; %s", log->value_count, count,
+                 log->complaint);
+    for (size_t i = 0; i < count; i++)
+        cr_assert(isnan(want[i]) ? isnan(log->values[i]) : log->values[i] == want[i],
+                  "value %zu is %g, not %g", i, (double)log->values[i], (double)want[i]);
 }
 
-static struct stream_parser *parser_on(struct heard *heard, double rate_hz)
-{
-    struct stream_parser *parser = NULL;
-    struct err err = {0};
-    const struct stream_sink sink = {hear_header, hear_block, heard};
-    cr_assert_eq(stream_parser_new(rate_hz, &sink, &parser, &err), 0, "%s", err.text);
-    return parser;
-}
+/* Ten rows a second whose values are 1, 2; 3, 4; ... */
+static const float counted[] = {1, 2, 3, 4, 5, 6, 7, 8, 9, 10};
 
-static void feed(struct stream_parser *parser, const void *bytes, size_t count)
-{
-    struct err err = {0};
-    cr_assert_eq(stream_parser_feed(parser, bytes, count, &err), 0, "%s", err.text);
-}
+/* ---- headers ---- */
 
-/* All at once; then by single bytes and by random pieces, which must say the same. */
-static int64_t parse(const void *bytes, size_t count, double rate_hz, struct heard *heard)
+Test(stream_parser, a_header_names_channels_and_time)
 {
-    struct stream_parser *parser = parser_on(heard, rate_hz);
-    feed(parser, bytes, count);
-    int64_t garbled = stream_parser_garbled(parser);
-    stream_parser_free(parser);
-    uint32_t seed = 1;
-    for (int round = 0; round < 4; round++) {
-        struct heard again = {0};
-        parser = parser_on(&again, rate_hz);
-        for (size_t at = 0; at < count;) {
-            seed = seed * 1664525u + 1013904223u;
-            size_t part = round == 0 ? 1 : 1 + (seed >> 16) % 300;
-            part = part < count - at ? part : count - at;
-            feed(parser, (const char *)bytes + at, part);
-            at += part;
-        }
-        cr_expect_str_eq(str_text(&again.text), str_text(&heard->text), "round %d", round);
-        cr_expect_eq(stream_parser_garbled(parser), garbled);
-        stream_parser_free(parser);
-        str_free(&again.text);
-    }
-    return garbled;
-}
-
-static int64_t parse_text(const char *text, double rate_hz, struct heard *heard)
-{
-    return parse(text, strlen(text), rate_hz, heard);
-}
-
-/* ---- lines ---- */
-
-Test(stream_parser, lines_as_documented)
-{
-    struct heard heard = {0};
-    int64_t garbled = parse_text("t,ECG II [mV],EDA [uS]\n"
-                                 "0,0.5,3\n0.1,0.75,3.5\r\n0.2,,NaN\n0.3,nan,4\n0.4,1,5\n",
-                                 0, &heard);
-    cr_expect_eq(garbled, 0);
-    cr_expect_str_eq(str_text(&heard.text),
-                     "H 1000000000/10 ECG II[mV]ecg x1 0..0 0..0 EDA[uS]eda x1 0..0 0..0\n"
-                     "B 0 0.5 3\nB 100000000 0.75 3.5\nB 200000000 nan nan\nB 300000000 nan 4\n"
-                     "B 400000000 1 5\n");
-    str_free(&heard.text);
+    struct stream_log log = play_text("t,ECG II [mV],EDA [uS]\n0,1,2\n0.1,3,4\n0.2,5,6\n"
+                                      "0.3,7,8\n0.4,9,10\n",
+                                      0);
+    cr_assert_eq(log.headers, 1);
+    cr_assert_eq(log.channel_count, 2);
+    cr_expect_str_eq(log.labels[0], "ECG II");
+    cr_expect_str_eq(log.units[0], "mV");
+    cr_expect_eq(log.channels[0].role, ROLE_ECG);
+    cr_expect_str_eq(log.labels[1], "EDA");
+    cr_expect_str_eq(log.units[1], "uS");
+    cr_expect_eq(log.channels[1].samples, 1);
+    cr_expect_eq(log.block_ns * 10, log.blocks * NS_PER_S);
+    expect_values(&log, counted, 10);
+    cr_expect_eq(log.own_ns[4], 400 * NS_PER_MS);
+    cr_expect_eq(log.garbled, 0);
+    cr_expect_str_eq(log.complaint, "");
+    stream_log_free(&log);
 }
 
 Test(stream_parser, delimiters_and_decimal_commas)
 {
-    struct heard heard = {0};
-    cr_expect_eq(
-        parse_text("time;RESP (Ohm)\n0,0;1,5\n0,1;2,5\n0,2;3,5\n0,3;4\n0,4;-5,25\n", 0, &heard), 0);
-    cr_expect_eq(heard.rows, 10);
-    cr_expect_float_eq(heard.last[0], -5.25, 0);
-    str_clear(&heard.text);
-    cr_expect_eq(parse_text("t\ta [1]\n0\t1\n1\t2\n2\t3\n3\t4\n4\t5\n", 0, &heard), 0);
-    cr_expect_eq(heard.rows, 1);
-    cr_expect_eq(heard.block_ns, NS_PER_S);
-    str_free(&heard.text);
+    static const char *const texts[] = {
+        "t\tECG II [mV]\tEDA\n0\t1\t2\n0.1\t3\t4\n0.2\t5\t6\n0.3\t7\t8\n0.4\t9\t10\n",
+        "t\tECG II [mV]\tEDA\n0,0\t1,0\t2\n0,1\t3\t4\n0,2\t5\t6,00\n0,3\t7\t8\n0,4\t9\t10\n",
+        "t;ECG II [mV];EDA\n0;1;2\n0,1;3,0;4\n0,2;5;6\n0,3;7;8,0\n0,4;9;10\n",
+        "t;ECG II [mV];EDA\n0;1;2\n0.1;3;4\n0.2;5;6\n0.3;7;8\n0.4;9;10\n",
+        " t , ECG II [mV] , EDA\n 0 , 1, 2\n 0.1, 3, 4\n0.2, 5, 6\n0.3 ,7,8\n0.4,9,10\n",
+        "EDA,t,ECG II [mV]\n1,0,2\n3,0.1,4\n5,0.2,6\n7,0.3,8\n9,0.4,10\n",
+        "t,\"ECG II [mV]\",\"EDA\"\n0,\"1\",2\n0.1,3,\"4\"\n0.2,5,6\n0.3,7,8\n0.4,9,10\n",
+        "T,ECG II [mV],EDA\n0,1e0,2\n1e-1,+3,4.\n.2,5,0.6e1\n0.3,7,8\n0.4,9,10\n",
+    };
+    for (size_t i = 0; i < sizeof texts / sizeof *texts; i++) {
+        struct stream_log log = play_text(texts[i], 0);
+        cr_assert_eq(log.headers, 1, "text %zu: %s", i, log.complaint);
+        expect_values(&log, counted, 10);
+        cr_expect_eq(log.own_ns[4], 400 * NS_PER_MS);
+        cr_expect_eq(log.garbled, 0);
+        stream_log_free(&log);
+    }
 }
 
-Test(stream_parser, times_of_day_and_dates)
-{
-    struct heard heard = {0};
-    cr_expect_eq(parse_text("t,a\n09:00:00.0,1\n09:00:00.5,2\n09:00:01.0,3\n09:00:01.5,4\n"
-                            "09:00:02.0,5\n",
-                            0, &heard),
-                 0);
-    cr_expect_eq(heard.rows, 2);
-    cr_expect_eq(heard.last_own_ns, (9 * 3600 + 2) * NS_PER_S);
-    str_clear(&heard.text);
-    cr_expect_eq(parse_text("t [ms],a\n0,1\n100,2\n200,3\n300,4\n400,5\n", 0, &heard), 0);
-    cr_expect_eq(heard.rows, 10);
-    str_free(&heard.text);
-}
-
-Test(stream_parser, rates_from_times)
+Test(stream_parser, times_in_ms_of_day_and_in_iso)
 {
     static const struct {
-        double rate_hz;
-        int decimals; /* of t */
-        int64_t block_ns, blocks;
-    } cases[] = {{1, 0, NS_PER_S, 1},         {32, 3, NS_PER_S, 32},
-                 {50, 3, NS_PER_S, 50},       {125, 3, NS_PER_S, 125},
-                 {250, 3, NS_PER_S, 250},     {256, 3, NS_PER_S, 256},
-                 {300, 3, NS_PER_S, 300},     {1000.0 / 3, 6, 3 * NS_PER_S, 1000},
-                 {500, 3, NS_PER_S, 500},     {1000, 3, NS_PER_S, 1000},
-                 {0.2, 1, 5 * NS_PER_S, 1},   {2048, 6, NS_PER_S, 2048},
-                 {62.5, 3, 2 * NS_PER_S, 125}};
-    for (size_t i = 0; i < sizeof cases / sizeof *cases; i++) {
-        struct heard heard = {0};
-        struct str lines = {0};
-        str_put(&lines, "t,a\n");
-        for (int row = 0; row < 100; row++)
-            str_putf(&lines, "%.*f,%d\n", cases[i].decimals, row / cases[i].rate_hz, row);
-        cr_expect_eq(parse_text(str_text(&lines), 0, &heard), 0);
-        cr_expect_eq(heard.block_ns, cases[i].block_ns, "%g Hz: %lld ns for %lld", cases[i].rate_hz,
-                     (long long)heard.block_ns, (long long)heard.rows);
-        cr_expect_eq(heard.rows, cases[i].blocks, "%g Hz", cases[i].rate_hz);
-        cr_expect_eq(heard.blocks, 100, "no row is lost while the rate is not known");
-        str_free(&lines);
-        str_free(&heard.text);
+        const char *name, *times[5];
+        int64_t first_ns;
+    } forms[] = {
+        {"t [ms]", {"250", "350", "450", "550", "650"}, 250 * NS_PER_MS},
+        {"time (ms)", {"250", "350.0", "450", "550", "650"}, 250 * NS_PER_MS},
+        {"t",
+         {"09:41:12.25", "09:41:12.35", "09:41:12.45", "09:41:12.55", "09:41:12.65"},
+         34872250 * NS_PER_MS},
+        {"time",
+         {"2031-05-20T08:55:00.25", "2031-05-20 08:55:00.35", "2031-05-20T08:55:00.45",
+          "2031-05-20T08:55:00.55", "2031-05-20T08:55:00.65"},
+         1937033700250 * NS_PER_MS},
+    };
+    for (size_t i = 0; i < sizeof forms / sizeof *forms; i++) {
+        struct input input = {0};
+        input_put(&input, "%s,a,b\n", forms[i].name);
+        for (int k = 0; k < 5; k++)
+            input_put(&input, "%s,%d,%d\n", forms[i].times[k], 2 * k + 1, 2 * k + 2);
+        struct stream_log log = input_play(&input);
+        cr_assert_eq(log.headers, 1, "form %zu: %s", i, log.complaint);
+        expect_values(&log, counted, 10);
+        for (int k = 0; k < 5; k++)
+            cr_expect_eq(log.own_ns[k], forms[i].first_ns + k * 100 * NS_PER_MS);
+        cr_expect_eq(log.block_ns * 10, log.blocks * NS_PER_S);
+        stream_log_free(&log);
     }
 }
 
 Test(stream_parser, a_given_rate_needs_no_time_and_no_header)
 {
-    struct heard heard = {0};
-    cr_expect_eq(parse_text("1,2\n3,4\n", 100, &heard), 0);
-    cr_expect_str_eq(str_text(&heard.text),
-                     "H 1000000000/100 channel 1[]none x1 0..0 0..0 channel 2[]none x1 0..0 "
-                     "0..0\nB -9223372036854775808 1 2\nB -9223372036854775808 3 4\n");
-    str_clear(&heard.text);
-    cr_expect_eq(parse_text("ABP [mmHg]\n80\n81\n", 125, &heard), 0);
-    cr_expect_eq(heard.rows, 125);
-    str_free(&heard.text);
-}
-
-Test(stream_parser, what_is_garbled_is_counted_and_the_rest_goes_on)
-{
-    static const char zero[] = "0.6,7\0,8\n0.7,9,10\n\0\0\0000.8,11,12\n";
-    struct heard heard = {0};
-    struct str lines = {0};
-    str_put(&lines, "garbage\n12,13\nt,a,b\n0,1,2\n0.1,3\n0.2,x4,5\n0.3,1,2,3\n\n \n\"0.4,5\n"
-                    "0.1,5,6\n0.2,5,6\n0.3,5,6\n0.4,5,6\n0.5,5,6\n");
-    str_put_n(&lines, zero, sizeof zero - 1);
-    for (int i = 0; i < 1 << 20; i++)
-        str_putc(&lines, '7');
-    str_put(&lines, "\n0.9,13,14\n");
-    int64_t garbled = parse(lines.text, lines.length, 0, &heard);
-    /* before the header 2; short, letter, long, blank, quote; a zero byte within; the long line */
-    cr_expect_eq(garbled, 9);
-    cr_expect_eq(heard.blocks, 9);
-    cr_expect_float_eq(heard.last[1], 14, 0);
-    str_free(&lines);
-    str_free(&heard.text);
-}
-
-Test(stream_parser, another_header_and_time_that_jumps)
-{
-    struct heard heard = {0};
-    struct str lines = {0};
-    str_put(&lines, "t,a\n");
-    for (int i = 0; i < 10; i++)
-        str_putf(&lines, "%.2f,%d\n", i / 10.0, i);
-    str_put(&lines, "86400,1\n-5,2\n5,3\n");
-    str_put(&lines, "t,a,c [mV]\n");
-    for (int i = 0; i < 10; i++)
-        str_putf(&lines, "%.2f,%d,1\n", i / 10.0, i);
-    cr_expect_eq(parse_text(str_text(&lines), 0, &heard), 0);
-    cr_expect_eq(heard.headers, 2);
-    cr_expect_eq(heard.blocks, 23);
-    cr_expect(strstr(str_text(&heard.text), "B 86400000000000 1\nB -5000000000 2\nB 5000000000 3"));
-    str_free(&lines);
-    str_free(&heard.text);
-}
-
-Test(stream_parser, a_broken_connection_goes_on_in_the_middle)
-{
-    struct heard heard = {0};
-    struct stream_parser *parser = parser_on(&heard, 0);
-    const char *first = "t,a\n0,1\n0.1,2\n0.2,3\n0.3,4\n0.4,5\n0.5";
-    const char *later = "8,17\n1.9,18\n";
-    feed(parser, first, strlen(first));
-    stream_parser_break(parser);
-    feed(parser, later, strlen(later));
-    cr_expect_eq(heard.headers, 1);
-    cr_expect_eq(heard.blocks, 7, "half a line was dropped; what came next may be half a line too");
-    cr_expect_eq(stream_parser_garbled(parser), 1);
-    stream_parser_free(parser);
-    str_free(&heard.text);
-}
-
-/* A device that sends its header only when it is switched on, joined in the middle. */
-Test(stream_parser, a_header_that_is_known_from_before_is_assumed)
-{
-    static const char *const known[] = {"ECG II [mV]", "a, \"b\" [1]"};
-    static const char *const rows[] = {"8,1\n0,0,0\n0.1,1,2\n0.2,3,4\n0.3,5,6\n0.4,7,8\n0.5,9,10\n",
-                                       "4;1\n5;1,5\n6;2,5\n"};
-    struct err err = {0};
-    for (int i = 0; i < 2; i++) {
-        struct heard heard = {0};
-        struct stream_parser *parser = parser_on(&heard, 0);
-        cr_assert_eq(stream_parser_assume(parser, known, 2, 250, &err), 0, "%s", err.text);
-        feed(parser, rows[i], strlen(rows[i]));
-        cr_expect_eq(heard.headers, 1);
-        cr_expect(strstr(str_text(&heard.text), " ECG II[mV]ecg"), "%s", str_text(&heard.text));
-        cr_expect(strstr(str_text(&heard.text), " a, \"b\"[1]"), "%s", str_text(&heard.text));
-        cr_expect_eq(heard.rows, i == 0 ? 10 : 250);
-        cr_expect_eq(heard.blocks, i == 0 ? 5 : 2);
-        cr_expect_float_eq(heard.last[1], i == 0 ? 10 : 2.5, 0);
-        stream_parser_free(parser);
-        str_free(&heard.text);
+    static const char *const texts[] = {
+        "a [mV],b\n1,2\n3,4\n5,6\n7,8\n9,10\n", "1,2\n3,4\n5,6\n7,8\n9,10\n",
+        "1;2,0\n3;4\n5;6\n7;8\n9;10\n", "t,a,b\n0,1,2\n0.5,3,4\n1,5,6\n1.5,7,8\n2,9,10\n"};
+    for (size_t i = 0; i < sizeof texts / sizeof *texts; i++) {
+        struct stream_log log = play_text(texts[i], 333.333);
+        cr_assert_eq(log.headers, 1, "text %zu: %s", i, log.complaint);
+        cr_expect_eq(log.block_ns, 3 * NS_PER_S);
+        cr_expect_eq(log.blocks, 1000);
+        expect_values(&log, counted, 10);
+        cr_expect_eq(log.own_ns[1], i == 3 ? 500 * NS_PER_MS : NS_NONE);
+        cr_expect_eq(log.garbled, 0);
+        cr_expect_str_eq(log.labels[0], i == 1 || i == 2 ? "channel 1" : "a");
+        stream_log_free(&log);
     }
 }
 
-/* ---- records ---- */
-
-static char folder[] = "/tmp/incisura-parser-XXXXXX";
-
-static void *slurp(const char *path, size_t *size)
+Test(stream_parser, without_header_and_rate_nothing_is_made_up)
 {
-    struct mapped mapped;
-    struct err err = {0};
-    cr_assert_eq(disk_files.map(&disk_files, path, &mapped, &err), 0, "%s", err.text);
-    void *copy = malloc(mapped.size);
-    cr_assert_not_null(copy);
-    memcpy(copy, mapped.data, mapped.size);
-    *size = mapped.size;
-    disk_files.unmap(&disk_files, &mapped);
-    return copy;
+    struct stream_log log = play_text("0,1,2\n0.1,3,4\nnonsense\n", 0);
+    cr_expect_eq(log.headers, 0);
+    cr_expect_eq(log.garbled, 3);
+    cr_expect_str_not_empty(log.complaint);
+    stream_log_free(&log);
 }
 
-enum { RECORDS = 6, FAST = 50, SLOW = 5 };
+/* ---- rows ---- */
 
-/* A file of two rates with a gap; its path in `path`. */
-static void write_file(bool bdf, const char *label, char path[80])
+Test(stream_parser, line_ends_blank_lines_and_zero_bytes_between_lines)
 {
-    const struct edf_channel_spec channels[] = {{label, "mV", "pads", "", -5, 5, 0, 0, FAST},
-                                                {"EDA", "uS", "", "", 0, 40, 0, 0, SLOW}};
-    const struct edf_spec spec = {.bdf = bdf,
-                                  .discontinuous = true,
-                                  .start_civil_ns = 1000 * NS_PER_S + 250 * NS_PER_MS,
-                                  .record_ns = 100 * NS_PER_MS,
-                                  .channels = channels,
-                                  .channel_count = 2};
-    struct edf_writer *writer = NULL;
-    struct err err = {0};
-    float samples[FAST + SLOW];
-    (void)snprintf(path, 80, "%s/%s.edf", folder, label);
-    cr_assert_eq(edf_writer_open(path, &spec, &writer, &err), 0, "%s", err.text);
-    for (int r = 0; r < RECORDS; r++) {
-        for (int i = 0; i < FAST + SLOW; i++)
-            samples[i] = (float)(i < FAST ? sin(r + i * 0.1) : 10 + r);
-        int64_t onset = r * 100 * NS_PER_MS + (r >= 3 ? 7 * NS_PER_S : 0);
-        cr_assert_eq(edf_writer_record(writer, onset, samples, &err), 0, "%s", err.text);
-    }
-    cr_assert_eq(edf_writer_close(writer, &err), 0, "%s", err.text);
+    static const char text[] = "\0\0t,a,b\r\n\r\n0,1,2\r\n\n\n0.1,3,4\0\r\n\0\0\0000.2,5,6\n\0\n"
+                               "0.3,7,8\n\r0.4,9,10\n\r";
+    struct input input = {0};
+    input_put_n(&input, text, sizeof text - 1);
+    struct stream_log log = input_play(&input);
+    expect_values(&log, counted, 10);
+    cr_expect_eq(log.garbled, 0, "%s", log.complaint);
+    stream_log_free(&log);
 }
 
-/* The stream gives what the file's reader gives. */
-static void check_against_file(const char *path, const struct heard *heard)
+Test(stream_parser, missing_samples_are_nan)
 {
-    struct recording *recording = NULL;
-    struct err err = {0};
-    float fast[RECORDS * FAST], slow[RECORDS * SLOW];
-    struct heard said = {0};
-    cr_assert_eq(recording_open(path, NULL, &recording, &err), 0, "%s", err.text);
-    cr_assert_eq(recording_read(recording, 0, 0, RECORDS * FAST, fast, &err), 0);
-    cr_assert_eq(recording_read(recording, 1, 0, RECORDS * SLOW, slow, &err), 0);
-    const struct channel *channel = &recording_info(recording)->channels[0];
-    for (int r = 0; r < RECORDS; r++) {
-        size_t run = run_of_sample(channel->runs, channel->run_count, r * FAST);
-        int64_t onset = run_time_ns(&channel->runs[run], r * FAST);
-        /* The file's own time counts from its start; the stream's onset holds the fraction. */
-        str_putf(&said.text, "B %lld", (long long)(onset + 250 * NS_PER_MS));
-        for (int i = 0; i < FAST; i++)
-            str_putf(&said.text, " %.9g", (double)fast[r * FAST + i]);
-        for (int i = 0; i < SLOW; i++)
-            str_putf(&said.text, " %.9g", (double)slow[r * SLOW + i]);
-        str_putc(&said.text, '\n');
-    }
-    const char *blocks = strchr(str_text(&heard->text), '\n') + 1;
-    cr_expect_str_eq(blocks, str_text(&said.text));
-    recording_close(recording);
-    str_free(&said.text);
+    static const float want[] = {NAN, 2, 3, NAN, NAN, NAN, 7, NAN, NAN, 10};
+    struct stream_log log = play_text("t,a,b\n0,,2\n0.1,3,NaN\n0.2,nan,\n0.3,7,--\n0.4,NA,10\n", 0);
+    expect_values(&log, want, 10);
+    cr_expect_eq(log.garbled, 0);
+    stream_log_free(&log);
 }
 
-static void make_folder(void)
+Test(stream_parser, garbled_rows_are_counted_and_skipped)
 {
-    cr_assert_not_null(mkdtemp(folder));
-}
-
-static void remove_folder(void)
-{
-    char command[128];
-    (void)snprintf(command, sizeof command, "rm -rf %s", folder);
-    cr_expect_eq(system(command), 0);
-}
-
-TestSuite(stream_records, .init = make_folder, .fini = remove_folder);
-
-Test(stream_records, are_what_the_files_reader_reads)
-{
-    for (int bdf = 0; bdf < 2; bdf++) {
-        char path[80];
-        size_t size;
-        struct heard heard = {0};
-        write_file(bdf, bdf ? "ECG B" : "ECG E", path);
-        void *bytes = slurp(path, &size);
-        cr_expect_eq(parse(bytes, size, 0, &heard), 0);
-        cr_expect_eq(heard.headers, 1);
-        check_against_file(path, &heard);
-        free(bytes);
-        str_free(&heard.text);
+    static const char *const bad[] = {
+        "0.05,1",       "0.05,1,2,3", "0.05,1x,2",        "0.05,1,2 3",  "x0.05,1,2",
+        "0.05,1.2.3,4", "0.05;1;2",   "0.05,\"1,2",       "0.05,1,2,",   ",1,2",
+        "nan,1,2",      "0.05,--1,2", "0.05,0x10,2",      "0.05,inf,2",  "0,05,1,2",
+        "0.05",         "\"",         "0.05,\xC3\x28,10", "\xFF\xFE,1,2"};
+    for (size_t i = 0; i < sizeof bad / sizeof *bad; i++) {
+        struct input input = {0};
+        input_put(&input, "t,a,b\n0,1,2\n%s\n0.1,3,4\n0.2,5,6\n%s\n0.3,7,8\n0.4,9,10\n", bad[i],
+                  bad[i]);
+        struct stream_log log = input_play(&input);
+        cr_assert_eq(log.headers, 1, "'%s'", bad[i]);
+        expect_values(&log, counted, 10);
+        cr_expect_eq(log.garbled, 2, "'%s': %lld", bad[i], (long long)log.garbled);
+        stream_log_free(&log);
     }
 }
 
-Test(stream_records, another_header_begins_anew)
+Test(stream_parser, a_zero_byte_inside_a_row_garbles_it)
 {
-    char first[80], second[80];
-    size_t a, b;
-    struct heard heard = {0};
-    write_file(true, "ECG A", first);
-    write_file(true, "ECG B", second);
-    uint8_t *one = slurp(first, &a), *two = slurp(second, &b);
-    uint8_t *both = malloc(a + b);
-    cr_assert_not_null(both);
-    memcpy(both, one, a);
-    memcpy(both + a, two, b);
-    cr_expect_eq(parse(both, a + b, 0, &heard), 0);
-    cr_expect_eq(heard.headers, 2);
-    cr_expect_eq(heard.blocks, 2 * RECORDS);
-    free(one);
-    free(two);
-    free(both);
-    str_free(&heard.text);
+    static const char text[] = "t,a,b\n0,1,2\n0.0\0005,1,2\n0.1,3,4\n0.2,5,6\n0.3,7,8\n0.4,9,10\n";
+    struct input input = {0};
+    input_put_n(&input, text, sizeof text - 1);
+    struct stream_log log = input_play(&input);
+    expect_values(&log, counted, 10);
+    cr_expect_eq(log.garbled, 1);
+    stream_log_free(&log);
 }
 
-Test(stream_records, lost_bytes_are_skipped_up_to_the_next_header)
+/* The longest line that is read, one byte more, and a megabyte. */
+Test(stream_parser, long_lines_are_skipped_to_their_end)
 {
-    char path[80];
-    size_t size;
-    struct heard heard = {0};
-    write_file(true, "ECG", path);
-    uint8_t *bytes = slurp(path, &size);
-    size_t header = 256 * 4, record = (size - header) / RECORDS, hole = header + record + 10;
-    uint8_t *broken = malloc(2 * size);
-    cr_assert_not_null(broken);
-    memcpy(broken, bytes, hole); /* record 1 loses 5 bytes */
-    memcpy(broken + hole, bytes + hole + 5, size - hole - 5);
-    memcpy(broken + size - 5, bytes, size);
-    int64_t garbled = parse(broken, 2 * size - 5, 0, &heard);
-    cr_expect_gt(garbled, 0);
-    cr_expect_eq(heard.headers, 2);
-    /* Samples of the broken record cannot be told from good ones: its onset can, one later. */
-    cr_expect(heard.blocks >= 1 + RECORDS && heard.blocks <= 2 + RECORDS, "%d blocks",
-              (int)heard.blocks);
-    free(bytes);
-    free(broken);
-    str_free(&heard.text);
-}
-
-Test(stream_records, a_break_in_a_record_then_a_header)
-{
-    char path[80];
-    size_t size;
-    struct heard heard = {0};
-    struct stream_parser *parser = parser_on(&heard, 0);
-    write_file(false, "ECG", path);
-    uint8_t *bytes = slurp(path, &size);
-    feed(parser, bytes, size - 7);
-    stream_parser_break(parser);
-    cr_expect_gt(stream_parser_garbled(parser), 0);
-    feed(parser, bytes, size);
-    cr_expect_eq(heard.headers, 2);
-    cr_expect_eq(heard.blocks, 2 * RECORDS - 1);
-    stream_parser_free(parser);
-    free(bytes);
-    str_free(&heard.text);
-}
-
-Test(stream_records, headers_that_cannot_be_meant_are_skipped)
-{
-    char path[80];
-    size_t size;
-    write_file(true, "ECG", path);
-    uint8_t *bytes = slurp(path, &size);
-    static const struct {
-        size_t at;
-        const char *text;
-    } wrong[] = {{252, "0   "}, {252, "9999"}, {252, "x   "}, {244, "0       "}, {244, "-1      "}};
-    for (size_t i = 0; i < sizeof wrong / sizeof *wrong; i++) {
-        struct heard heard = {0};
-        uint8_t *both = malloc(2 * size);
-        cr_assert_not_null(both);
-        memcpy(both, bytes, size);
-        memcpy(both + wrong[i].at, wrong[i].text, strlen(wrong[i].text));
-        memcpy(both + size, bytes, size);
-        cr_expect_gt(parse(both, 2 * size, 0, &heard), 0, "%s", wrong[i].text);
-        cr_expect_eq(heard.headers, 1, "%zu", i);
-        cr_expect_eq(heard.blocks, RECORDS, "%zu", i);
-        free(both);
-        str_free(&heard.text);
+    static const size_t lengths[] = {65535, 65536, 1 << 20};
+    for (size_t i = 0; i < 3; i++) {
+        struct input input = {.rate_hz = 10};
+        char *line = malloc(lengths[i]);
+        cr_assert_not_null(line);
+        memset(line, ' ', lengths[i]);
+        memcpy(line, "0.1,3,4", 7);
+        input_put(&input, "t,a,b\n0,1,2\n");
+        input_put_n(&input, line, lengths[i]);
+        input_put(&input, "\n0.2,5,6\n0.3,7,8\n0.4,9,10\n0.5,11,12\n");
+        free(line);
+        struct stream_log log = input_play(&input);
+        cr_expect_eq(log.block_count, i == 0 ? 6 : 5);
+        cr_expect_eq(log.garbled, i == 0 ? 0 : 1);
+        stream_log_free(&log);
     }
-    free(bytes);
+}
+
+Test(stream_parser, time_is_delivered_as_it_is)
+{
+    static const int64_t want[] = {0, 100, 200, 300, 400, 100, 86400200, 86400300, 5, -7000};
+    struct stream_log log = play_text("t,a\n0,1\n0.1,2\n0.2,3\n0.3,4\n0.4,5\n0.1,6\n86400.2,7\n"
+                                      "86400.3,8\n0.005,9\n-7,10\n",
+                                      0);
+    cr_assert_eq(log.headers, 1);
+    cr_assert_eq(log.block_count, 10);
+    for (size_t i = 0; i < 10; i++)
+        cr_expect_eq(log.own_ns[i], want[i] * NS_PER_MS);
+    stream_log_free(&log);
+}
+
+/* ---- changes and breaks ---- */
+
+Test(stream_parser, another_header_changes_the_channels)
+{
+    struct stream_log log = play_text("t,a,b\n0,1,2\n0.1,3,4\n0.2,5,6\n0.3,7,8\n0.4,9,10\n"
+                                      "t;c [mV]\n0;1,5\n0,5;2,5\n1;3,5\n1,5;4,5\n2;5,5\n",
+                                      0);
+    cr_assert_eq(log.headers, 2);
+    cr_assert_eq(log.block_count, 10);
+    cr_expect_eq(log.channel_count, 1);
+    cr_expect_str_eq(log.labels[0], "c");
+    cr_expect_eq(log.values[14], 5.5f);
+    cr_expect_eq(log.block_ns, log.blocks / 2 * NS_PER_S);
+    cr_expect_eq(log.garbled, 0);
+    stream_log_free(&log);
+}
+
+/* Rows that wait for their rate are not lost when a header comes. */
+Test(stream_parser, another_header_while_the_rate_is_not_known)
+{
+    struct stream_log log = play_text("t,a\n0,1\n0.1,2\n0.2,3\nt,b\n0,1\n1,2\n2,3\n3,4\n4,5\n", 0);
+    cr_assert_eq(log.headers, 2);
+    cr_assert_eq(log.block_count, 8);
+    cr_expect_eq(log.own_ns[2], 200 * NS_PER_MS);
+    cr_expect_eq(log.garbled, 0);
+    stream_log_free(&log);
+}
+
+Test(stream_parser, a_break_inside_a_line_drops_that_half)
+{
+    struct input input = {0};
+    input_put(&input, "t,a,b\n0,1,2\n0.1,3,4\n0.2,5,6\n0.3,7,8\n0.35,1");
+    input_break(&input);
+    input_put(&input, "9\n0.4,9,10\n"); /* in the middle of a line, and on without a header */
+    input_break(&input);
+    input_break(&input);
+    input_put(&input, "0.5,1");
+    input_break(&input);
+    struct stream_log log = input_play(&input);
+    cr_assert_eq(log.headers, 1);
+    expect_values(&log, counted, 10);
+    cr_expect_eq(log.garbled, 3);
+    stream_log_free(&log);
+}
+
+Test(stream_parser, a_header_again_after_a_break)
+{
+    struct input input = {.rate_hz = 10};
+    input_put(&input, "a,b\n1,2\n3,4\n");
+    input_break(&input);
+    input_put(&input, "a,b\n5,6\n7,8\n");
+    input_break(&input);
+    input_put(&input, "9,10\n");
+    struct stream_log log = input_play(&input);
+    expect_values(&log, counted, 10);
+    cr_expect_eq(log.garbled, 0);
+    stream_log_free(&log);
+}
+
+/* ---- what only looks like a header or a row ---- */
+
+Test(stream_parser, blank_lines_with_blanks_are_no_rows)
+{
+    static const float want[] = {1, 2, 3};
+    struct stream_log log = play_text("a\n1\n   \n2\n\t \r\n3\n", 10);
+    expect_values(&log, want, 3);
+    cr_expect_eq(log.garbled, 0);
+    stream_log_free(&log);
+    static const float tabbed[] = {1, 2, NAN, NAN, 3, 4};
+    log = play_text("a\tb\n1\t2\n\t\n3\t4\n", 10);
+    expect_values(&log, tabbed, 6);
+    stream_log_free(&log);
+    char blanks[65535];
+    struct input input = {.rate_hz = 10};
+    memset(blanks, ' ', sizeof blanks);
+    input_put_n(&input, blanks, sizeof blanks);
+    input_put(&input, "\na\n1\n2\n3\n");
+    log = input_play(&input);
+    expect_values(&log, want, 3);
+    stream_log_free(&log);
+}
+
+/* A byte that became a quote hides the rest of the line. */
+Test(stream_parser, a_quote_that_is_not_closed_garbles_its_row)
+{
+    struct stream_log log = play_text("a,b\n1,2\n\"9,8\n9,\"8\n3,4\n9,8\"\n5,6\n7,8\n9,10\n", 10);
+    expect_values(&log, counted, 10);
+    cr_expect_eq(log.garbled, 3);
+    stream_log_free(&log);
+}
+
+Test(stream_parser, a_mark_of_byte_order_is_no_part_of_the_header)
+{
+    struct stream_log log = play_text("\xEF\xBB\xBFt,a\n0,1\n1,2\n2,3\n3,4\n4,5\n", 0);
+    cr_assert_eq(log.headers, 1);
+    cr_expect_eq(log.block_count, 5);
+    cr_expect_eq(log.garbled, 0);
+    stream_log_free(&log);
+}
+
+/* As makers write micro and degree. */
+Test(stream_parser, a_header_in_latin_1)
+{
+    struct stream_log log = play_text("t,Temp [\xB0"
+                                      "C],EDA [\xB5S]\n0,1,2\n1,3,4\n2,5,6\n3,7,8\n4,9,10\n",
+                                      0);
+    cr_assert_eq(log.headers, 1);
+    cr_expect_str_eq(log.units[0], "\xC2\xB0"
+                                   "C");
+    cr_expect_str_eq(log.units[1], "\xC2\xB5S");
+    stream_log_free(&log);
+}
+
+Test(stream_parser, labels_that_are_the_same_are_numbered)
+{
+    struct stream_log log = play_text("a,a,b,a,,\n1,2,3,4,5,6\n1,2,3,4,5,6\n", 10);
+    static const char *const want[] = {"a", "a #2", "b", "a #3", "channel 5", "channel 6"};
+    cr_assert_eq(log.channel_count, 6);
+    for (size_t i = 0; i < 6; i++)
+        cr_expect_str_eq(log.labels[i], want[i]);
+    stream_log_free(&log);
+}
+
+Test(stream_parser, words_of_a_device_are_no_header)
+{
+    static const char *const words[] = {"READY", "OK;low battery", "lost,electrode,check"};
+    static const char *const starts[] = {"", "a,b\n"};
+    for (size_t i = 0; i < 6; i++) {
+        struct input input = {.rate_hz = 10};
+        input_put(&input, "%s\n%s", words[i / 2], starts[i % 2]);
+        input_put(&input, "1,2\n3,4\n%s\n5,6\n7,8\n9,10\n", words[i / 2]);
+        struct stream_log log = input_play(&input);
+        expect_values(&log, counted, 10);
+        cr_expect_eq(log.headers, 1);
+        cr_expect_eq(log.garbled, 2, "%s: %lld", words[i / 2], (long long)log.garbled);
+        stream_log_free(&log);
+    }
+}
+
+Test(stream_parser, a_garbled_number_alone_in_its_row_is_no_header)
+{
+    static const char *const bad[] = {"1x3", "-x", ".", "inf", "-inf", "+", "1.2.3", "1 2"};
+    static const float want[] = {1, 2, 3};
+    for (size_t i = 0; i < sizeof bad / sizeof *bad; i++) {
+        struct input input = {.rate_hz = 10};
+        input_put(&input, "1\n2\n%s\n3\n", bad[i]);
+        struct stream_log log = input_play(&input);
+        cr_expect_eq(log.headers, 1, "%s", bad[i]);
+        expect_values(&log, want, 3);
+        cr_expect_eq(log.garbled, 1);
+        stream_log_free(&log);
+    }
+}
+
+/* A serial line is joined in the middle of a row, which says nothing about how wide rows are. */
+Test(stream_parser, half_a_row_before_rows_without_a_header)
+{
+    static const char *const halves[] = {"2", "", "\xFF\x80", ",2,3", ".5"};
+    for (size_t i = 0; i < sizeof halves / sizeof *halves; i++) {
+        struct input input = {.rate_hz = 10};
+        input_put(&input, "%s\n1,2\n3,4\n5,6\n7,8\n9,10\n", halves[i]);
+        struct stream_log log = input_play(&input);
+        expect_values(&log, counted, 10);
+        cr_expect_eq(log.garbled, *halves[i] ? 1 : 0, "'%s'", halves[i]);
+        stream_log_free(&log);
+    }
+}
+
+Test(stream_parser, a_header_whose_time_is_not_closed_has_none)
+{
+    struct stream_log log = play_text("t [s,a\n0,1\n1,2\nt,a\n0,1\n1,2\n2,3\n3,4\n4,5\n", 0);
+    cr_assert_eq(log.headers, 1);
+    cr_expect_eq(log.block_count, 5);
+    cr_expect_eq(log.garbled, 3);
+    stream_log_free(&log);
+}
+
+Test(stream_parser, rows_whose_rate_was_never_known_are_counted)
+{
+    struct stream_log log = play_text("t,a\n5,1\n5,2\n5,3\nt,b\n0,1\n1,2\n2,3\n3,4\n4,5\n", 0);
+    cr_assert_eq(log.headers, 1);
+    cr_expect_eq(log.block_count, 5);
+    cr_expect_eq(log.garbled, 3);
+    stream_log_free(&log);
+}
+
+Test(stream_parser, times_that_cannot_be_kept_garble_their_row)
+{
+    struct stream_log log = play_text("t,a\n0,1\n1,2\n9e9,9\n-9e9,9\n1e300,9\n2,3\n3,4\n4,5\n", 0);
+    cr_expect_eq(log.block_count, 5);
+    cr_expect_eq(log.garbled, 3);
+    stream_log_free(&log);
+}
+
+Test(stream_parser, a_rate_that_cannot_be_meant_is_refused)
+{
+    static const double rates[] = {-1, NAN, INFINITY, 1e300, 1e-9};
+    struct stream_sink sink = {0};
+    for (size_t i = 0; i < sizeof rates / sizeof *rates; i++) {
+        struct stream_parser *parser = NULL;
+        struct err err = {0};
+        cr_expect_eq(stream_parser_new(rates[i], &sink, &parser, &err), ERR_USAGE, "%g", rates[i]);
+        cr_expect_null(parser);
+        cr_expect_str_not_empty(err.text);
+    }
+}
+
+/* More columns than a recording could have. */
+Test(stream_parser, a_line_of_too_many_columns_is_garbled)
+{
+    struct input input = {.rate_hz = 10};
+    for (int row = 0; row < 3; row++) {
+        for (int i = 0; i < 1026; i++)
+            input_put(&input, row == 0 ? "a," : "1,");
+        input_put(&input, "\n");
+    }
+    struct stream_log log = input_play(&input);
+    cr_expect_eq(log.headers, 0);
+    cr_expect_eq(log.garbled, 3);
+    stream_log_free(&log);
 }
